@@ -1,0 +1,62 @@
+"""The one decorator for compiled kernels.
+
+Kernels are compiled for explicit signatures, cached beside the source or in the folder that the
+environment variable ``NUMBA_CACHE_DIR`` names. Where no cache folder can be written (a read-only
+install run by a user without a home) they are compiled in memory at each start, and one log line
+says so. ``fastmath`` and ``parallel`` stay off: they would let the machine decide the bytes.
+"""
+
+from __future__ import annotations
+
+import logging
+from collections.abc import Callable
+from typing import TypeVar
+
+import numba
+
+log = logging.getLogger(__name__)
+
+Function = TypeVar("Function", bound=Callable[..., object])
+
+_told_uncached = False
+
+
+def kernel(*signatures: str, inline: bool = False) -> Callable[[Function], Function]:
+    """Compile a function for the given Numba signatures, without the interpreter lock.
+
+    Parameters
+    ----------
+    *signatures : str
+        Numba signatures, for example ``"void(float32[:, ::1], float32[:, ::1])"``. None for a
+        small helper that is compiled as part of its callers (which must live in the same file:
+        the cache does not see a change in another one).
+    inline : bool
+        Ask LLVM to inline a helper into its callers.
+
+    Returns
+    -------
+    decorator
+        Gives back a function with the same call signature.
+    """
+    options: dict[str, object] = {"nogil": True, "error_model": "numpy"}
+    if inline:
+        options["forceinline"] = True
+
+    def compile_it(function: Function) -> Function:
+        global _told_uncached
+        chosen = list(signatures) or None
+        try:
+            return numba.njit(chosen, cache=True, **options)(function)  # type: ignore[no-any-return]
+        except (RuntimeError, OSError) as error:
+            if isinstance(error, RuntimeError) and "cannot cache" not in str(error):
+                raise
+            if not _told_uncached:
+                log.warning(
+                    "kernels are compiled anew at each start: no cache folder can be written (%s); "
+                    "set NUMBA_CACHE_DIR to a writable folder",
+                    error,
+                )
+                _told_uncached = True
+            return numba.njit(chosen, **options)(function)  # type: ignore[no-any-return]
+
+    return compile_it
