@@ -1,0 +1,298 @@
+"""The compiled chain from stored numbers to fluxes, one small kernel a step, on one tile.
+
+All arrays are float32 of one tile's shape unless said otherwise; NaN is the only "no value". Each
+kernel has its readable statement in the module named in its docstring, and a test holds the two
+equal. The arithmetic is plain IEEE float32: the same tile gives the same bytes on every machine.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from groundglow.kernels import kernel
+from groundglow.physics.band_table import CELL_SHIFT
+from groundglow.physics.constants import STEFAN_BOLTZMANN
+from groundglow.quantities import FLAG
+
+Pixels = NDArray[np.float32]
+Flags = NDArray[np.uint16]
+
+_NAN = np.float32(np.nan)
+_ONE = np.float32(1.0)
+_ZERO = np.float32(0.0)
+_HALF = np.float32(0.5)
+_SIGMA = np.float32(STEFAN_BOLTZMANN)
+_FOUR = np.float32(4.0)
+_NO_DATA = np.uint16(FLAG["no_data"].mask)
+_SATURATED = np.uint16(FLAG["saturated"].mask)
+_IMPOSSIBLE = np.uint16(FLAG["impossible"].mask)
+_OUTSIDE_RANGE = np.uint16(FLAG["outside_calibrated_range"].mask)
+_NEARLY_OPAQUE = np.uint16(FLAG["air_nearly_opaque"].mask)
+_OPAQUE_BELOW = np.float32(0.4)
+_SHIFT = np.int32(CELL_SHIFT)
+# Fixed-point passes for a transmittance that depends on the temperature sought: each gains about
+# two digits, so four reach float32 in every shipped band.
+_PASSES = 4
+
+
+@kernel("void(float32[:, ::1], float32, float32, float32, float32[:, ::1], uint16[:, ::1])")
+def radiance_of_stored(
+    stored: Pixels, scale: float, offset: float, saturation: float, radiance: Pixels, flags: Flags
+) -> None:
+    """Stored numbers to spectral radiance, with fill, saturation and negative values flagged.
+
+    ``radiance = scale * stored + offset``; ``saturation`` is the stored number from which on the
+    band is saturated (infinite where there is none). A saturated pixel keeps its radiance, which is
+    a lower bound. Statement: ``retrieval.chain.radiance_of_stored``.
+    """
+    for i in range(stored.shape[0]):
+        for j in range(stored.shape[1]):
+            number = stored[i, j]
+            if np.isnan(number):
+                radiance[i, j] = _NAN
+                flags[i, j] |= _NO_DATA
+            else:
+                radiance[i, j] = scale * number + offset
+                if number >= saturation:
+                    flags[i, j] |= _SATURATED
+
+
+@kernel(
+    "void(float32[:, ::1], float32[::1], float32[::1], float32[::1], int32, float32, float32, float32[:, ::1])"
+)
+def temperature_of_radiance(
+    radiance: Pixels,
+    start: Pixels,
+    temperature: Pixels,
+    slope: Pixels,
+    first_key: int,
+    lowest: float,
+    highest: float,
+    result: Pixels,
+) -> None:
+    """Band radiance to temperature through a band table; NaN outside it.
+
+    Statement: ``physics.band_table.temperature_of_band_radiance``.
+    """
+    keys = radiance.view(np.int32)
+    for i in range(radiance.shape[0]):
+        for j in range(radiance.shape[1]):
+            level = radiance[i, j]
+            if level >= lowest and level <= highest:
+                cell = (keys[i, j] >> _SHIFT) - first_key
+                result[i, j] = temperature[cell] + slope[cell] * (level - start[cell])
+            else:
+                result[i, j] = _NAN
+
+
+@kernel("void(float32[:, ::1], float32, float32, uint16[:, ::1])")
+def flag_range(brightness: Pixels, lowest: float, highest: float, flags: Flags) -> None:
+    """Flag brightness temperatures outside the sensor's calibrated range; values stay."""
+    for i in range(brightness.shape[0]):
+        for j in range(brightness.shape[1]):
+            if brightness[i, j] < lowest or brightness[i, j] > highest:
+                flags[i, j] |= _OUTSIDE_RANGE
+
+
+@kernel(inline=True)
+def _transmittance_at(air: Pixels, i: int, j: int, temperature: float, nodes: Pixels) -> tuple[float, float]:
+    """Quadratic through three surface temperatures: the transmittance and its slope."""
+    x = temperature
+    if x < nodes[0]:
+        x = nodes[0]
+    if x > nodes[2]:
+        x = nodes[2]
+    h1 = nodes[1] - nodes[0]
+    h2 = nodes[2] - nodes[1]
+    d1 = (air[1, i, j] - air[0, i, j]) / h1
+    d2 = (air[2, i, j] - air[1, i, j]) / h2
+    curve = (d2 - d1) / (h1 + h2)
+    value = air[0, i, j] + (x - nodes[0]) * (d1 + curve * (x - nodes[1]))
+    inclination = d1 + curve * ((x - nodes[0]) + (x - nodes[1]))
+    if x != temperature:
+        inclination = _ZERO
+    return value, inclination
+
+
+@kernel(
+    "void(float32[:, ::1], float32[:, ::1], float32[:, :, ::1], float32[::1], float32[::1], float32[::1],"
+    " float32[::1], int32, float32, float32, float32[:, ::1], float32[:, ::1], float32[:, ::1], uint16[:, ::1])"
+)
+def surface_temperature(
+    radiance: Pixels,
+    emissivity: Pixels,
+    air: Pixels,
+    weighting: Pixels,
+    start: Pixels,
+    temperature: Pixels,
+    slope: Pixels,
+    first_key: int,
+    lowest: float,
+    highest: float,
+    result: Pixels,
+    blackbody: Pixels,
+    response: Pixels,
+    flags: Flags,
+) -> None:
+    """Single-channel inversion of ``L = eps t(T) B(T) + (1 - eps) r + p``.
+
+    ``air`` holds per pixel the transmittance at each temperature of ``weighting`` (one or three),
+    the path radiance and the transmitted sky radiance, then fields this kernel does not read.
+    ``blackbody`` receives t B (what the air lets through of the blackbody's radiance), ``response``
+    dL/dT = eps d(t B)/dT. Statement: ``retrieval.chain.surface_temperature``.
+    """
+    count = weighting.shape[0]
+    bits = np.empty(1, dtype=np.float32)
+    key = bits.view(np.int32)
+    for i in range(radiance.shape[0]):
+        for j in range(radiance.shape[1]):
+            result[i, j] = _NAN
+            blackbody[i, j] = _NAN
+            response[i, j] = _NAN
+            eps = emissivity[i, j]
+            level = radiance[i, j]
+            t = air[0, i, j]
+            if t < _OPAQUE_BELOW:
+                flags[i, j] |= _NEARLY_OPAQUE
+            if np.isnan(level) or np.isnan(eps) or np.isnan(t):
+                continue
+            through = (level - air[count, i, j] - (_ONE - eps) * air[count + 1, i, j]) / eps
+            inclination = _ZERO
+            if count == 3:
+                t = air[1, i, j]
+            found = _NAN
+            gradient = _ONE
+            for _ in range(_PASSES if count == 3 else 1):
+                source = through / t
+                if not (source >= lowest and source <= highest):
+                    found = _NAN
+                    break
+                bits[0] = source
+                cell = (key[0] >> _SHIFT) - first_key
+                gradient = slope[cell]
+                found = temperature[cell] + gradient * (source - start[cell])
+                if count == 3:
+                    t, inclination = _transmittance_at(air, i, j, found, weighting)
+            if np.isnan(found):
+                flags[i, j] |= _OUTSIDE_RANGE if through / t > highest else _IMPOSSIBLE
+                continue
+            result[i, j] = found
+            blackbody[i, j] = through
+            response[i, j] = eps * (t / gradient + inclination * through / t)
+
+
+@kernel(
+    "void(float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, :, ::1],"
+    " int32, int32, float32[:, ::1], float32, float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1])"
+)
+def temperature_uncertainty(
+    temperature: Pixels,
+    blackbody: Pixels,
+    response: Pixels,
+    emissivity: Pixels,
+    emissivity_uncertainty: Pixels,
+    air: Pixels,
+    temperatures: int,
+    causes: int,
+    noise: Pixels,
+    calibration: float,
+    pixel: Pixels,
+    surface_class: Pixels,
+    scene: Pixels,
+    total: Pixels,
+) -> None:
+    """First-order standard uncertainty of the surface temperature, by what the errors share.
+
+    ``pixel``: noise; ``surface_class``: emissivity, kept with its sign (dT/d eps times u(eps)), so
+    that the flux can carry the covariance; ``scene``: calibration and the air's causes.
+    Statement: ``retrieval.uncertainty``.
+    """
+    fields = temperatures + 3
+    for i in range(temperature.shape[0]):
+        for j in range(temperature.shape[1]):
+            slope = response[i, j]
+            if np.isnan(slope):
+                pixel[i, j] = _NAN
+                surface_class[i, j] = _NAN
+                scene[i, j] = _NAN
+                total[i, j] = _NAN
+                continue
+            eps = emissivity[i, j]
+            through = blackbody[i, j]
+            t = air[0, i, j]
+            own = noise[i, j] / slope
+            shared = -(through - air[temperatures + 1, i, j]) / slope * emissivity_uncertainty[i, j]
+            common = (calibration / slope) * (calibration / slope)
+            for cause in range(causes):
+                base = (cause + 1) * fields
+                change = _ZERO
+                if temperatures == 3:
+                    t = air[1, i, j]
+                    change += eps * through / t * air[base + 1, i, j]
+                else:
+                    change += eps * through / t * air[base, i, j]
+                change += air[base + temperatures, i, j]
+                change += (_ONE - eps) * air[base + temperatures + 1, i, j]
+                change = change / slope
+                common += change * change
+            pixel[i, j] = own
+            surface_class[i, j] = shared
+            scene[i, j] = np.sqrt(common)
+            total[i, j] = np.sqrt(own * own + shared * shared + common)
+
+
+@kernel(
+    "void(float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1],"
+    " float32[:, ::1], float32[:, ::1], float32[:, ::1])"
+)
+def emitted_flux(
+    temperature: Pixels,
+    pixel: Pixels,
+    surface_class: Pixels,
+    scene: Pixels,
+    emissivity: Pixels,
+    shared: Pixels,
+    own: Pixels,
+    flux: Pixels,
+    uncertainty: Pixels,
+) -> None:
+    """Emitted flux eps sigma T^4 and its standard uncertainty.
+
+    ``emissivity`` is broadband; ``shared`` is the part of its error that moves with the band
+    emissivity's (signed, like ``surface_class``), ``own`` the rule's own part.
+    Statement: ``physics.flux.emitted_flux`` and ``retrieval.uncertainty``.
+    """
+    for i in range(temperature.shape[0]):
+        for j in range(temperature.shape[1]):
+            t = temperature[i, j]
+            t2 = t * t
+            black = _SIGMA * t2 * t2
+            flux[i, j] = emissivity[i, j] * black
+            per_kelvin = _FOUR * emissivity[i, j] * _SIGMA * t2 * t
+            noise = per_kelvin * pixel[i, j]
+            common = per_kelvin * scene[i, j]
+            together = per_kelvin * surface_class[i, j] + black * shared[i, j]
+            rule = black * own[i, j]
+            uncertainty[i, j] = np.sqrt(noise * noise + common * common + together * together + rule * rule)
+
+
+@kernel("void(float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, ::1])")
+def surface_fluxes(emitted: Pixels, emissivity: Pixels, sky: Pixels, leaving: Pixels, net: Pixels) -> None:
+    """Leaving flux (emitted and reflected) and net longwave flux, downward positive.
+
+    Statement: ``physics.flux.leaving_flux`` and ``physics.flux.net_longwave_flux``.
+    """
+    for i in range(emitted.shape[0]):
+        for j in range(emitted.shape[1]):
+            leaving[i, j] = emitted[i, j] + (_ONE - emissivity[i, j]) * sky[i, j]
+            net[i, j] = sky[i, j] - leaving[i, j]
+
+
+@kernel("void(float32[:, ::1], uint16[:, ::1], uint16)")
+def mask_flagged(values: Pixels, flags: Flags, mask: int) -> None:
+    """Set to NaN every value whose flags meet the mask."""
+    for i in range(values.shape[0]):
+        for j in range(values.shape[1]):
+            if flags[i, j] & mask:
+                values[i, j] = _NAN
