@@ -65,19 +65,21 @@ def checked(model: type[Model], content: Mapping[str, Any], *, where: str) -> Mo
     try:
         return model.model_validate(content)
     except ValidationError as error:
-        lines = list(dict.fromkeys(_explain(model, fault) for fault in error.errors(include_url=False)))
+        faults = error.errors(include_url=False)
+        told = [_explain(model, fault) for fault in faults if not _told_by_another(fault, faults)]
+        lines = list(dict.fromkeys(told))
         raise ConfigError("; ".join(lines), where=where) from error
 
 
 def _explain(model: type[BaseModel], fault: Any) -> str:
-    place = fault["loc"]
+    place = _without_tags(model, fault["loc"])
     key = _path(place)
     kind = fault["type"]
     cause = fault.get("ctx", {}).get("error")
     if isinstance(cause, GroundglowError):
         return f"{key}: {cause}" if key else str(cause)
     if kind == "extra_forbidden":
-        known = sorted(_keys_at(model, place[:-1]))
+        known = sorted(_keys_at(model, fault["loc"][:-1]))
         near = difflib.get_close_matches(str(place[-1]), known, n=1)
         hint = f"did you mean {near[0]!r}?" if near else f"known keys: {', '.join(known)}"
         return f"unknown key {key!r} ({hint})"
@@ -86,21 +88,44 @@ def _explain(model: type[BaseModel], fault: Any) -> str:
     text = fault["msg"].removeprefix("Value error, ")
     text = text[:1].lower() + text[1:]
     found = fault.get("input")
-    shown = "" if isinstance(found, Mapping) else f", found {found!r}"
+    shown = "" if isinstance(found, Mapping) or kind == "value_error" else f", found {found!r}"
     return f"{key}: {text}{shown}" if key else text
 
 
+def _told_by_another(fault: Any, faults: Sequence[Any]) -> bool:
+    """A list that is "too short" only because its items are at fault is no fault of its own."""
+    place = fault["loc"]
+    return fault["type"] == "too_short" and any(
+        len(other["loc"]) > len(place) and other["loc"][: len(place)] == place for other in faults
+    )
+
+
 def _path(place: Sequence[str | int]) -> str:
-    """Keys and list positions as a reader would write them; tags of unions are left out."""
+    """Keys and list positions as a reader would write them."""
     text = ""
     for part in place:
         if isinstance(part, int):
             text += f"[{part + 1}]"
-        elif part.startswith("function-") or part.endswith("]") or (part and part[0].isupper()):
-            continue
         else:
             text += f".{part}" if text else part
     return text
+
+
+def _without_tags(model: type[BaseModel], place: Sequence[str | int]) -> list[str | int]:
+    """The place without the marks by which the checker names the branch of a union."""
+    models: set[type[BaseModel]] = {model}
+    kept: list[str | int] = []
+    for position, part in enumerate(place):
+        if isinstance(part, int):
+            kept.append(part)
+            continue
+        if position < len(place) - 1 and not any(part in m.model_fields for m in models):
+            models = {m for m in models if part in _tags(m)} or models
+            continue
+        kept.append(part)
+        found = {inner for m in models if part in m.model_fields for inner in _models_in(m.model_fields[part].annotation)}
+        models = found or models
+    return kept
 
 
 def _keys_at(model: type[BaseModel], place: Sequence[str | int]) -> set[str]:

@@ -1,8 +1,8 @@
 """The compiled chain from stored numbers to fluxes, one small kernel a step, on one tile.
 
 All arrays are float32 of one tile's shape unless said otherwise; NaN is the only "no value". Each
-kernel has its readable statement in the module named in its docstring, and a test holds the two
-equal. The arithmetic is plain IEEE float32: the same tile gives the same bytes on every machine.
+kernel has its readable statement in the module named in its docstring, and a test holds the
+two equal. The arithmetic is plain IEEE float32: the same tile gives the same bytes on every machine.
 """
 
 from __future__ import annotations
@@ -36,28 +36,6 @@ _SHIFT = np.int32(CELL_SHIFT)
 _PASSES = 4
 
 
-@kernel("void(float32[:, ::1], float32, float32, float32, float32[:, ::1], uint16[:, ::1])")
-def radiance_of_stored(
-    stored: Pixels, scale: float, offset: float, saturation: float, radiance: Pixels, flags: Flags
-) -> None:
-    """Stored numbers to spectral radiance, with fill, saturation and negative values flagged.
-
-    ``radiance = scale * stored + offset``; ``saturation`` is the stored number from which on the
-    band is saturated (infinite where there is none). A saturated pixel keeps its radiance, which is
-    a lower bound. Statement: ``retrieval.chain.radiance_of_stored``.
-    """
-    for i in range(stored.shape[0]):
-        for j in range(stored.shape[1]):
-            number = stored[i, j]
-            if np.isnan(number):
-                radiance[i, j] = _NAN
-                flags[i, j] |= _NO_DATA
-            else:
-                radiance[i, j] = scale * number + offset
-                if number >= saturation:
-                    flags[i, j] |= _SATURATED
-
-
 @kernel(
     "void(float32[:, ::1], float32[::1], float32[::1], float32[::1], int32, float32, float32, float32[:, ::1])"
 )
@@ -86,13 +64,23 @@ def temperature_of_radiance(
                 result[i, j] = _NAN
 
 
-@kernel("void(float32[:, ::1], float32, float32, uint16[:, ::1])")
-def flag_range(brightness: Pixels, lowest: float, highest: float, flags: Flags) -> None:
-    """Flag brightness temperatures outside the sensor's calibrated range; values stay."""
+@kernel("void(float32[:, ::1], float32[:, ::1], float32, float32, float32, uint16[:, ::1])")
+def flag_radiance(
+    radiance: Pixels, brightness: Pixels, lowest: float, highest: float, saturation: float, flags: Flags
+) -> None:
+    """Flag pixels without radiance, outside the calibrated range or at the sensor's saturation.
+
+    The limits are brightness temperatures; values stay as they are. A radiance that is no
+    blackbody's (negative, or beyond the table) has no brightness temperature and is outside too.
+    """
     for i in range(brightness.shape[0]):
         for j in range(brightness.shape[1]):
-            if brightness[i, j] < lowest or brightness[i, j] > highest:
+            if np.isnan(radiance[i, j]):
+                flags[i, j] |= _NO_DATA
+            elif not (brightness[i, j] >= lowest and brightness[i, j] <= highest):
                 flags[i, j] |= _OUTSIDE_RANGE
+            if brightness[i, j] >= saturation:
+                flags[i, j] |= _SATURATED
 
 
 @kernel(inline=True)
@@ -175,7 +163,7 @@ def surface_temperature(
                 if count == 3:
                     t, inclination = _transmittance_at(air, i, j, found, weighting)
             if np.isnan(found):
-                flags[i, j] |= _OUTSIDE_RANGE if through / t > highest else _IMPOSSIBLE
+                flags[i, j] |= _IMPOSSIBLE
                 continue
             result[i, j] = found
             blackbody[i, j] = through
