@@ -106,12 +106,14 @@ def _table(radiance: Callable[[ArrayLike], Float], slope: Callable[[ArrayLike], 
     keys = np.array([lowest, highest], dtype=np.float32).view(np.int32) >> CELL_SHIFT
     edges_bits = np.arange(keys[0], keys[1] + 2, dtype=np.int32) << CELL_SHIFT
     edges = edges_bits.view(np.float32).astype(np.float64)
-    temperature = _invert(edges, radiance, slope)
+    # Slopes between the rounded temperatures: a cell then never ends above the start of the next, and
+    # more radiance never maps colder by a rounding step.
+    temperature = _invert(edges, radiance, slope).astype(np.float32)
     return BandTable(
         first_key=int(keys[0]),
         start=edges[:-1].astype(np.float32),
-        temperature=temperature[:-1].astype(np.float32),
-        slope=(np.diff(temperature) / np.diff(edges)).astype(np.float32),
+        temperature=temperature[:-1],
+        slope=(np.diff(temperature.astype(np.float64)) / np.diff(edges)).astype(np.float32),
         lowest_radiance=lowest,
         highest_radiance=highest,
     )
