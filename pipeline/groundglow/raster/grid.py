@@ -60,5 +60,20 @@ class Grid:
 
     def window_grid(self, block: Block) -> Grid:
         """The grid of one block."""
-        shifted = self.transform * Affine.translation(block.column, block.row)
+        shifted = compose(self.transform, Affine.translation(block.column, block.row))
         return Grid(self.crs, shifted, block.width, block.height)
+
+
+def compose(outer: Affine, inner: Affine) -> Affine:
+    """The transform that applies ``inner`` first, then ``outer``.
+
+    Written out because versions of the affine package disagree about the operator.
+    """
+    return Affine(
+        outer.a * inner.a + outer.b * inner.d,
+        outer.a * inner.b + outer.b * inner.e,
+        outer.a * inner.c + outer.b * inner.f + outer.c,
+        outer.d * inner.a + outer.e * inner.d,
+        outer.d * inner.b + outer.e * inner.e,
+        outer.d * inner.c + outer.e * inner.f + outer.f,
+    )

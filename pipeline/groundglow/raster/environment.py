@@ -1,0 +1,36 @@
+"""GDAL's appetite, set by us in one place."""
+
+from __future__ import annotations
+
+from contextlib import AbstractContextManager, nullcontext
+
+import rasterio
+from rasterio.env import getenv, hasenv
+
+CACHE_MEGABYTES = 64
+
+# TRUE rather than EMPTY_DIR: world files and headers beside a raster are still found by name.
+_OPTIONS = {
+    "GDAL_CACHEMAX": CACHE_MEGABYTES,
+    "GDAL_NUM_THREADS": "1",
+    "GDAL_PAM_ENABLED": "NO",
+    "GDAL_DISABLE_READDIR_ON_OPEN": "TRUE",
+    "GDAL_HTTP_MAX_RETRY": "3",
+    "GDAL_HTTP_RETRY_DELAY": "1",
+    "CPL_VSIL_CURL_USE_HEAD": "NO",
+}
+
+
+def gdal_environment() -> AbstractContextManager[object]:
+    """The settings under which every raster is opened and read.
+
+    A small block cache, one thread, no side files of statistics, no listing of folders. Entering
+    costs about 0.1 ms, and nothing where the calling thread is already inside.
+
+    Returns
+    -------
+    context manager
+    """
+    if hasenv() and getenv().get("GDAL_PAM_ENABLED") == "NO":
+        return nullcontext()
+    return rasterio.Env(**_OPTIONS)  # type: ignore[no-any-return]
