@@ -14,7 +14,7 @@ from groundglow.errors import DomainError
 from groundglow.layers import encode_kernels as kernels
 from groundglow.layers.layer_format import LayerFormat, codec_versions, format_of
 from groundglow.layers.pyramid import EncodedTile, OverviewPart, Pixels, Pyramid, TileEncoder
-from groundglow.layers.statistics import BlockPartial, TilePartial, new_bins
+from groundglow.layers.statistics import BlockPartial, Histogram, TilePartial
 from groundglow.raster.grid import TILE, Block, Grid
 
 __all__ = ["EncodedBlock", "LayerFormat", "codec_versions", "encode_block", "format_of"]
@@ -92,19 +92,21 @@ class _Summaries:
 
     def __init__(self) -> None:
         self._tiles: list[TilePartial] = []
-        self._bins = new_bins()
+        self._histogram = Histogram()
 
     def take(self, tile: Pixels, place: tuple[int, int], shape: tuple[int, int]) -> None:
         summary = np.empty(5)
         kernels.summarise_tile(tile, shape, summary)
-        kernels.count_magnitudes(tile.view(np.uint32), shape, self._bins)
+        kernels.count_magnitudes(tile.view(np.uint32), shape, self._histogram.bins)
         count, *rest = summary.tolist()
         self._tiles.append(TilePartial(*place, int(count), *rest))
 
     def result(self) -> BlockPartial:
-        counts = self._bins.sum(axis=0, dtype=np.int64)
-        keys = np.flatnonzero(counts)
-        return BlockPartial(tuple(self._tiles), keys.astype(np.int32), counts[keys])
+        valid = [tile for tile in self._tiles if tile.count]
+        if not valid:
+            return BlockPartial(tuple(self._tiles), np.empty(0, np.int32), np.empty(0, np.int64))
+        minimum, maximum = min(tile.minimum for tile in valid), max(tile.maximum for tile in valid)
+        return BlockPartial(tuple(self._tiles), *self._histogram.occupied(minimum, maximum))
 
 
 class _ValueCounts:

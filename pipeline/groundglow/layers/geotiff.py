@@ -28,7 +28,7 @@ from groundglow.layers.tiff_structure import FOUR_GIGABYTES, Level, file_header
 from groundglow.raster.grid import Grid
 
 _REMEDIES = {
-    errno.ENOSPC: "Free some space (twice the size of the layers is needed in passing) or choose another folder",
+    errno.ENOSPC: "Free some space (twice the layers' size is needed in passing) or choose another folder",
     errno.EDQUOT: "The quota is used up: free some space or choose another folder",
     errno.EFBIG: "The system limits the size of files here: raise the limit or choose another folder",
     errno.EACCES: "Give the user that runs this the right to write there, or choose another folder",

@@ -99,8 +99,7 @@ def format_of(name: str, compression: Compression = "zstd", level: int | None = 
 def codec(layer_format: LayerFormat) -> Callable[[memoryview], bytes]:
     """The compressor of a format, for one thread."""
     if layer_format.compression == "zstd":
-        compressor = zstandard.ZstdCompressor(level=layer_format.level)
-        return lambda data: compressor.compress(data)
+        return zstandard.ZstdCompressor(level=layer_format.level).compress
     return lambda data: zlib.compress(data, layer_format.level)
 
 

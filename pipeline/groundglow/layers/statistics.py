@@ -7,17 +7,15 @@ numbers, so that the result does not depend on the order in which tiles were mad
 from __future__ import annotations
 
 import math
+import mmap
 from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
-from groundglow.layers.encode_kernels import (
-    HISTOGRAM_BINS,
-    HISTOGRAM_FIRST,
-    HISTOGRAM_SHIFT,
-    HISTOGRAM_SPAN,
-)
+from groundglow.layers.encode_kernels import HISTOGRAM_BINS, HISTOGRAM_SHIFT
+
+_SIGN = HISTOGRAM_BINS // 2
 
 
 @dataclass(frozen=True, order=True, slots=True)
@@ -130,40 +128,67 @@ class StatisticsCollector:
         )
 
 
-def bin_edges(bins: NDArray[np.int64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+class Histogram:
+    """Counts of float32 values by their leading bits.
+
+    Most of the table's million bins are never touched: an anonymous memory map takes memory (and
+    time for its zeros) only where it is, and only the stretch between the extremes is read.
+    """
+
+    def __init__(self) -> None:
+        shape = (4, HISTOGRAM_BINS)
+        zeros = mmap.mmap(-1, 4 * shape[0] * shape[1])
+        self.bins: NDArray[np.int32] = np.frombuffer(zeros, np.int32).reshape(shape)
+
+    def occupied(self, minimum: float, maximum: float) -> tuple[NDArray[np.int32], NDArray[np.int64]]:
+        """Occupied bins and their counts, of values within a range."""
+        stretches = []
+        if minimum < 0.0:
+            stretches.append((_bin_of(maximum) if maximum < 0.0 else _SIGN, _bin_of(minimum)))
+        if maximum >= 0.0:
+            stretches.append((_bin_of(minimum) if minimum >= 0.0 else 0, _bin_of(maximum)))
+        keys, counts = [], []
+        for first, last in stretches:
+            summed = self.bins[:, first : last + 1].sum(axis=0, dtype=np.int64)
+            places = np.flatnonzero(summed)
+            keys.append((places + first).astype(np.int32))
+            counts.append(summed[places])
+        return np.concatenate(keys), np.concatenate(counts)
+
+
+def bin_edges(bins: NDArray[np.int32]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Lower and upper edge of histogram bins.
 
     Parameters
     ----------
-    bins : int array (n,)
-        Bin numbers as the counting kernel uses them, 0 to ``HISTOGRAM_BINS - 1``.
+    bins : int32 array (n,)
+        The leading 20 bits of the values within.
 
     Returns
     -------
     lower, upper : float64 arrays (n,)
-        In the unit of the layer. The middle bin is taken as zero wide.
+        In the unit of the layer.
     """
-    place = bins - HISTOGRAM_SPAN
-    distance = np.abs(place)
-    near = ((distance + HISTOGRAM_FIRST) << HISTOGRAM_SHIFT).astype(np.uint32).view(np.float32)
-    far = ((distance + 1 + HISTOGRAM_FIRST) << HISTOGRAM_SHIFT).astype(np.uint32).view(np.float32)
-    near = np.where(distance == 0, 0.0, near.astype(np.float64))
-    far = np.where(distance == 0, 0.0, far.astype(np.float64))
-    return np.where(place < 0, -far, near), np.where(place < 0, -near, far)
+    magnitude = bins & (_SIGN - 1)
+    near = (magnitude << HISTOGRAM_SHIFT).view(np.float32).astype(np.float64)
+    far = ((magnitude + 1) << HISTOGRAM_SHIFT).view(np.float32).astype(np.float64)
+    negative = bins >= _SIGN
+    return np.where(negative, -far, near), np.where(negative, -near, far)
 
 
-def new_bins() -> NDArray[np.int32]:
-    """Empty histogram for the counting kernel."""
-    return np.zeros((4, HISTOGRAM_BINS), np.int32)
+def _bin_of(value: float) -> int:
+    """The bin a float32 falls into."""
+    return int(np.float32(value).view(np.uint32) >> HISTOGRAM_SHIFT)
 
 
 def _quantiles(
     histogram: dict[int, int], shares: tuple[float, ...], minimum: float, maximum: float
 ) -> tuple[float, ...]:
     """Quantiles of a histogram, linear within a bin and never outside the range of the values."""
-    bins = np.array(sorted(histogram), dtype=np.int64)
-    counts = np.array([histogram[int(place)] for place in bins], dtype=np.int64)
-    lower, upper = bin_edges(bins)
+    lower, upper = bin_edges(np.array(list(histogram), dtype=np.int32))
+    order = np.argsort(lower)
+    lower, upper = lower[order], upper[order]
+    counts = np.array(list(histogram.values()), dtype=np.int64)[order]
     reached = np.cumsum(counts)
     found = []
     for share in shares:
