@@ -131,3 +131,37 @@ def _invert(
         # d ln L / d(1/T) = -T^2 L'/L
         inverse = inverse + np.log(target / level) / (-(t**2) * slope(t) / level)
     return 1.0 / inverse
+
+
+@dataclass(frozen=True)
+class RadianceTable:
+    """Band radiance as a function of temperature: the way there, for rasters that come in kelvin.
+
+    Attributes
+    ----------
+    temperature : float64 array (n,)
+        Evenly spaced. [K]
+    radiance : float64 array (n,)
+        [W m-2 sr-1 um-1]
+    """
+
+    temperature: Float
+    radiance: Float
+
+    def __call__(self, temperature: ArrayLike) -> NDArray[np.float32]:
+        """Band radiance of a blackbody; NaN outside 150 K to 1,500 K. [W m-2 sr-1 um-1]
+
+        Parameters
+        ----------
+        temperature : array, any shape
+            [K]
+        """
+        t = np.asarray(temperature, dtype=np.float64)
+        return np.interp(t, self.temperature, self.radiance, left=np.nan, right=np.nan).astype(np.float32)
+
+
+def radiance_table(radiance: Callable[[ArrayLike], Float]) -> RadianceTable:
+    """Table in steps of 0.1 K of a band's law, for example ``response.band_radiance``."""
+    count = round((HIGHEST_TEMPERATURE - LOWEST_TEMPERATURE) / 0.1) + 1
+    temperature = np.linspace(LOWEST_TEMPERATURE, HIGHEST_TEMPERATURE, count)
+    return RadianceTable(temperature, radiance(temperature))

@@ -113,6 +113,10 @@ class Job(Document):
     atmosphere: Atmosphere
     quality: Quality = Field(default_factory=Quality)
     layers: Layers = Field(default_factory=Layers)
+    compare: dict[str, str] = Field(
+        default_factory=dict,
+        description="Rasters of known values by layer name; the run reports the map's error against them.",
+    )
     run: Execution = Field(default_factory=Execution)
 
     @field_validator("scenes", mode="before")
@@ -128,6 +132,9 @@ class Job(Document):
                 f"the layers {', '.join(wanted)} need a sky flux, and this atmosphere gives none: "
                 "add sky_flux to it or leave these layers out"
             )
+        for name in self.compare:
+            if name not in self.layers.write or name == "quality":
+                raise ValueError(f"compare names {name!r}, which is not among the layers written")
         if self.atmosphere.source == "none":
             wanted = [name for name in self.layers.write if name not in ("brightness_temperature", "quality")]
             if wanted:

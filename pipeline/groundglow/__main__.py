@@ -1,0 +1,5 @@
+"""Run as ``python -m groundglow``."""
+
+from groundglow.cli import main
+
+main()

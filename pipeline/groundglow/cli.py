@@ -1,0 +1,99 @@
+"""The command line: parse, call ``run``, print, exit code. Nothing else lives here.
+
+Exit codes: 0 all done; 1 a defect of Groundglow; 2 the command, job or scene file cannot be followed as
+written; 3 nothing could be made; 4 some scenes failed; 75 try again later; 130 interrupted.
+"""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from groundglow import __version__
+from groundglow.errors import GroundglowError
+
+EXIT_CODES = """\
+Exit codes: 0 all done (a fully clouded scene included); 2 the command, job or scene file cannot be followed as written;
+3 nothing could be made; 4 some scenes failed; 75 the output folder is in use, try again later; 130 interrupted.
+"""
+
+app = typer.Typer(
+    name="groundglow",
+    help="Calibrated maps of surface temperature and emitted flux from thermal-infrared rasters, unattended.",
+    epilog=EXIT_CODES,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    add_completion=False,
+    no_args_is_help=True,
+)
+
+JobFile = Annotated[Path, typer.Argument(metavar="JOB", help="Job file (TOML); configs/ holds commented examples.")]
+Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="No progress and no table; errors still show.")]
+Json = Annotated[bool, typer.Option("--json", help="Print the summary as JSON on standard output.")]
+
+
+def _show_version(value: bool) -> None:
+    if value:
+        typer.echo(__version__)
+        raise typer.Exit
+
+
+@app.callback()
+def common(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Show the version and leave.")
+    ] = False,
+) -> None:
+    """Calibrated maps of surface temperature and emitted flux from thermal-infrared rasters, unattended."""
+
+
+@app.command(epilog=EXIT_CODES)
+def run(
+    job: JobFile,
+    output: Annotated[Path | None, typer.Option(help="Write here instead of the job's output folder.")] = None,
+    workers: Annotated[int | None, typer.Option(min=1, help="Threads; default: the job's, else all cores.")] = None,
+    scheduler: Annotated[
+        str, typer.Option(help="'threads', 'processes[:N]', or tcp://host:port of a Dask scheduler.")
+    ] = "threads",
+    quiet: Quiet = False,
+    as_json: Json = False,
+) -> None:
+    """Run a job: read its scenes, write the layers, print what came out.
+
+    Each scene becomes one folder of cloud-optimised GeoTIFF layers with a STAC Item, written last. A folder
+    appears only when it is complete; a run that is stopped leaves no half-written layer.
+    """
+    from groundglow.run.commands import run_job  # noqa: PLC0415  (help must not wait for the libraries)
+
+    code = run_job(job, output=output, workers=workers, scheduler=scheduler, quiet=quiet, as_json=as_json)
+    raise typer.Exit(code)
+
+
+@app.command(epilog=EXIT_CODES)
+def plan(job: JobFile, as_json: Json = False) -> None:
+    """Show what a run would do: scenes, grids, blocks, layers, estimated memory and disk space.
+
+    Reads headers only and writes nothing.
+    """
+    from groundglow.run.commands import plan_job  # noqa: PLC0415  (help must not wait for the libraries)
+
+    raise typer.Exit(plan_job(job, as_json=as_json))
+
+
+def main() -> None:
+    """Entry point: errors meant for the user become one line on standard error and an exit code."""
+    try:
+        app()
+    except GroundglowError as error:
+        typer.echo(f"groundglow: {error}", err=True)
+        sys.exit(error.exit_code)
+    except KeyboardInterrupt:
+        typer.echo("groundglow: interrupted; nothing half-written was left", err=True)
+        sys.exit(130)
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,205 @@
+"""From a job and a scene to the work to be done: every choice resolved before a pixel is read."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+
+from groundglow.atmosphere.interpolate import pack
+from groundglow.errors import ConfigError
+from groundglow.layers.layer_format import LayerFormat, format_of
+from groundglow.quantities import FLAG
+from groundglow.raster.band import RasterSource
+from groundglow.raster.grid import Block, Grid
+from groundglow.raster.open import describe_raster
+from groundglow.run.air_source import Air, air_of_job
+from groundglow.run.config import Job
+from groundglow.run.config_emissivity import ConstantEmissivity
+from groundglow.run.emissivity_source import ConstantSource, EmissivitySource, RasterSourceOfEmissivity
+from groundglow.run.radiometry import chain_settings, radiance_conversion
+from groundglow.run.worker import SceneWork
+from groundglow.scene.model import Scene, ThermalBand
+
+_RASTER_UNCERTAINTY = 0.02
+# Bytes a pixel of one block in flight: inputs, air fields, tiles and encoded layers.
+_BYTES_FIXED = 60
+_BYTES_A_LAYER = 10
+_BYTES_A_FIELD = 1
+# What the interpreter, the libraries and the compiled kernels take before the first block.
+_BASE_MEBIBYTES = 260
+# Bytes a pixel of a finished layer, a cautious figure for noisy data.
+_STORED_BYTES = {"float32": 3.0, "uint16": 0.5}
+
+
+@dataclass(frozen=True, eq=False)
+class ScenePlan:
+    """What will be done for one scene.
+
+    Attributes
+    ----------
+    scene : Scene
+    band : ThermalBand
+        The band used.
+    work : SceneWork
+        What the tasks need.
+    blocks : tuple of Block
+    air : Air or None
+    method : mapping
+        What was chosen, for the provenance.
+    """
+
+    scene: Scene
+    band: ThermalBand
+    work: SceneWork
+    blocks: tuple[Block, ...]
+    air: Air | None
+    method: Mapping[str, object]
+
+    @property
+    def name(self) -> str:
+        """The scene's name, which is its output folder's."""
+        return self.scene.name
+
+    def peak_mebibytes(self, workers: int) -> float:
+        """Estimated peak memory of the process, with that many blocks in flight. [MiB]"""
+        largest = max(block.height * block.width for block in self.blocks)
+        fields = self.work.air.fields if self.work.air is not None else 0
+        a_pixel = _BYTES_FIXED + _BYTES_A_LAYER * len(self.work.formats) + _BYTES_A_FIELD * fields
+        return _BASE_MEBIBYTES + workers * largest * a_pixel / 2**20
+
+    def disk_bytes(self) -> int:
+        """Disk space needed in passing: the layers twice."""
+        pixels = self.work.grid.height * self.work.grid.width
+        return int(2 * pixels * sum(_STORED_BYTES[layer.dtype] for layer in self.work.formats.values()))
+
+
+def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
+    """Resolve a job for one scene.
+
+    Parameters
+    ----------
+    job : Job
+    folder : Path
+        Folder of the job file: its relative paths start there.
+    scene : Scene
+
+    Returns
+    -------
+    ScenePlan
+
+    Raises
+    ------
+    ConfigError
+        If job and scene do not fit each other.
+    InputError
+        If the thermal raster cannot be read.
+    """
+    band = _chosen_band(job, scene)
+    info = describe_raster(band.source.path, indirect=band.source.indirect)
+    grid = info.grid
+    air = air_of_job(job.atmosphere, band.number)
+    weighting = air.grid.surface_temperature if air is not None else np.array([300.0])
+    step = _quantisation_step(band, info.dtypes[band.source.band - 1], info.scales[band.source.band - 1])
+    causes = len(air.grid.causes) if air is not None else 0
+    settings, account = chain_settings(band, job.temperature, weighting, causes, step)
+    emissivity = _emissivity(job, scene, band) if air is not None else None
+    work = SceneWork(
+        grid=grid,
+        thermal=band.source,
+        convert=radiance_conversion(band, job.temperature.radiometry),
+        quality=scene.quality,
+        elevation=_elevation(scene, air),
+        view_zenith_angle=scene.view_zenith_angle,
+        emissivity=emissivity,
+        air=pack(air.grid) if air is not None else None,
+        settings=settings,
+        formats=_formats(job),
+        mask=sum(FLAG[name].mask for name in job.quality.mask),
+        references=_references(job, folder),
+    )
+    method = {
+        "surface_temperature": job.temperature.method,
+        "radiometry": job.temperature.radiometry,
+        "band": band.number,
+        "sensor": scene.sensor.name,
+        **account,
+    }
+    if emissivity is not None:
+        method["emissivity"] = emissivity.describe()
+    if air is not None:
+        method["atmosphere"] = air.account
+    return ScenePlan(scene, band, work, tuple(grid.blocks(job.run.block)), air, method)
+
+
+def _chosen_band(job: Job, scene: Scene) -> ThermalBand:
+    wanted = job.temperature.band
+    if wanted is None:
+        return scene.thermal[0]
+    for band in scene.thermal:
+        if band.number == wanted:
+            return band
+    raise ConfigError(
+        f"the scene {scene.name} has no thermal band {wanted!r}",
+        where="temperature.band",
+        remedy=f"Choose from: {', '.join(band.number for band in scene.thermal)}",
+    )
+
+
+def _quantisation_step(band: ThermalBand, dtype: str, file_scale: float) -> float:
+    """Radiance of one step of the stored numbers."""
+    if not np.issubdtype(np.dtype(dtype), np.integer):
+        return 0.0
+    scale = band.source.scale if band.source.scale is not None else file_scale
+    if band.quantity in ("counts", "radiance"):
+        return abs(scale)
+    return abs(scale) * float(band.sensor_band.response.band_radiance_slope(300.0))
+
+
+def _emissivity(job: Job, scene: Scene, band: ThermalBand) -> EmissivitySource:
+    chosen = job.emissivity
+    if isinstance(chosen, ConstantEmissivity):
+        return ConstantSource(chosen.value, chosen.uncertainty, chosen.broadband, chosen.broadband_uncertainty)
+    raster = scene.emissivity.get(band.number)
+    if raster is None:
+        raise ConfigError(
+            f"the scene {scene.name} names no emissivity raster for band {band.number}",
+            where="emissivity.source",
+            remedy="Add an [[emissivity]] table to the scene file, or choose another emissivity source",
+        )
+    stated = chosen.uncertainty if chosen.uncertainty is not None else raster.uncertainty
+    uncertainty = _RASTER_UNCERTAINTY if stated is None else stated
+    return RasterSourceOfEmissivity(raster.source, uncertainty, chosen.broadband_uncertainty)
+
+
+def _elevation(scene: Scene, air: Air | None) -> RasterSource | float:
+    if scene.elevation is not None:
+        return scene.elevation
+    if air is not None and air.grid.height.size > 1:
+        raise ConfigError(
+            f"the air is given over ground heights, and the scene {scene.name} names no elevation",
+            where="atmosphere",
+            remedy="Add elevation to the scene file (a raster or a number in m)",
+        )
+    return 0.0
+
+
+def _formats(job: Job) -> dict[str, LayerFormat]:
+    return {name: format_of(name, job.layers.compression, job.layers.level) for name in job.layers.write}
+
+
+def _references(job: Job, folder: Path) -> dict[str, RasterSource]:
+    found = {}
+    for name, path in job.compare.items():
+        source = RasterSource(str(folder / path))
+        describe_raster(source.path)
+        found[name] = source
+    return found
+
+
+def isfinite_or_none(value: float) -> float | None:
+    """NaN as None, for JSON."""
+    return value if math.isfinite(value) else None
