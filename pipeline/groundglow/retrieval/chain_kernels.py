@@ -128,7 +128,7 @@ def surface_temperature(
     ``air`` holds per pixel the transmittance at each temperature of ``weighting`` (one or three),
     the path radiance and the transmitted sky radiance, then fields this kernel does not read.
     ``blackbody`` receives t B (what the air lets through of the blackbody's radiance), ``response``
-    dL/dT = eps d(t B)/dT. Statement: ``retrieval.chain.surface_temperature``.
+    dL/dT = eps d(t B)/dT. Statement: ``retrieval.single_channel.invert``.
     """
     count = weighting.shape[0]
     bits = np.empty(1, dtype=np.float32)
@@ -194,7 +194,7 @@ def temperature_uncertainty(
 
     ``pixel``: noise; ``surface_class``: emissivity, kept with its sign (dT/d eps times u(eps)), so
     that the flux can carry the covariance; ``scene``: calibration and the air's causes.
-    Statement: ``retrieval.uncertainty``.
+    Statement: ``retrieval.uncertainty.propagate``.
     """
     # Rows are walked field by field, without a branch, so that the compiler can use whole vectors;
     # where there is no temperature the slope is NaN, and so is all that follows.
@@ -243,7 +243,7 @@ def emitted_flux(
 
     ``emissivity`` is broadband; ``shared`` is the part of its error that moves with the band
     emissivity's (signed, like ``surface_class``), ``own`` the rule's own part.
-    Statement: ``physics.flux.emitted_flux`` and ``retrieval.uncertainty``.
+    Statement: ``physics.flux.emitted_flux`` and ``retrieval.uncertainty.propagate_flux``.
     """
     for i in range(temperature.shape[0]):
         for j in range(temperature.shape[1]):
