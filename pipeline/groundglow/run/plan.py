@@ -25,6 +25,7 @@ from groundglow.run.worker import SceneWork
 from groundglow.scene.model import Scene, ThermalBand
 
 _RASTER_UNCERTAINTY = 0.02
+_METRES_A_DEGREE = 111_320.0
 # Bytes a pixel of one block in flight: inputs, air fields, tiles and encoded layers.
 _BYTES_FIXED = 60
 _BYTES_A_LAYER = 10
@@ -120,6 +121,8 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         formats=_formats(job),
         mask=sum(FLAG[name].mask for name in job.quality.mask),
         references=_references(job, folder),
+        cloud_buffer=job.quality.cloud_buffer,
+        pixel=pixel_in_metres(grid),
     )
     method = {
         "surface_temperature": job.temperature.method,
@@ -200,6 +203,12 @@ def _references(job: Job, folder: Path) -> dict[str, RasterSource]:
     return found
 
 
-def isfinite_or_none(value: float) -> float | None:
-    """NaN as None, for JSON."""
-    return value if math.isfinite(value) else None
+def pixel_in_metres(grid: Grid) -> tuple[float, float]:
+    """Height and width of a grid's pixel on the ground, at its centre. [m]"""
+    a, b, _, d, e, f = tuple(grid.transform)[:6]
+    across, down = math.hypot(a, d), math.hypot(b, e)
+    if not grid.crs.is_geographic:
+        factor = float(grid.crs.linear_units_factor[1])
+        return down * factor, across * factor
+    latitude = f + 0.5 * (d * grid.width + e * grid.height)
+    return down * _METRES_A_DEGREE, across * _METRES_A_DEGREE * math.cos(math.radians(latitude))

@@ -28,6 +28,7 @@ from groundglow.retrieval.chain import (
     mask_flagged,
     surface_maps,
 )
+from groundglow.retrieval.chain_cloud import near_cloud
 from groundglow.run.emissivity_source import EmissivitySource
 from groundglow.scene.model import QualityRaster
 from groundglow.scene.quality import flags_of_codes
@@ -37,6 +38,8 @@ Flags = NDArray[np.uint16]
 
 _SATURATED = np.uint16(FLAG["saturated"].mask)
 _INTERPOLATED = np.uint16(FLAG["interpolated"].mask)
+_CLOUD = np.uint16(FLAG["cloud"].mask)
+_NEAR_CLOUD = np.uint16(FLAG["near_cloud"].mask)
 _OUTSIDE_VALIDITY = np.uint16(FLAG["atmosphere_outside_validity"].mask)
 
 
@@ -67,6 +70,10 @@ class SceneWork:
         Flags whose pixels carry no number.
     references : mapping of str to RasterSource
         Known values of layers to compare with.
+    cloud_buffer : float
+        Distance from a cloud within which pixels are flagged. [m]
+    pixel : tuple of float
+        Height and width of a pixel. [m]
     """
 
     grid: Grid
@@ -81,6 +88,13 @@ class SceneWork:
     formats: Mapping[str, LayerFormat]
     mask: int
     references: Mapping[str, RasterSource] = field(default_factory=dict)
+    cloud_buffer: float = 0.0
+    pixel: tuple[float, float] = (1.0, 1.0)
+
+    @property
+    def halo(self) -> tuple[int, int]:
+        """Rows and columns around a block whose clouds it must know."""
+        return int(self.cloud_buffer / self.pixel[0]), int(self.cloud_buffer / self.pixel[1])
 
 
 class ErrorSums(NamedTuple):
@@ -215,9 +229,25 @@ def _radiance_and_flags(work: SceneWork, block: Block) -> tuple[Pixels, Flags]:
     if read.mixed is not None:
         flags |= _INTERPOLATED
     if work.quality is not None:
-        words = read_codes(work.quality.source, work.grid, block, resampling="majority")
-        flags |= np.where(words.valid, flags_of_codes(words.codes, work.quality.rules), np.uint16(0))
+        flags |= _quality_flags(work, work.quality, block)
     return read.values, flags
+
+
+def _quality_flags(work: SceneWork, quality: QualityRaster, block: Block) -> Flags:
+    """Flags of the quality raster, and of the pixels near its clouds."""
+    above, left = min(work.halo[0], block.row), min(work.halo[1], block.column)
+    below = min(work.halo[0], work.grid.height - block.row - block.height)
+    right = min(work.halo[1], work.grid.width - block.column - block.width)
+    wide = Block(
+        block.row - above, block.column - left, block.height + above + below, block.width + left + right
+    )
+    words = read_codes(quality.source, work.grid, wide, resampling="majority")
+    flags = np.where(words.valid, flags_of_codes(words.codes, quality.rules), np.uint16(0))
+    if work.cloud_buffer == 0.0:
+        return flags
+    near = near_cloud((flags & _CLOUD) != 0, (above, below, left, right), work.pixel, work.cloud_buffer)
+    flags = flags[above : above + block.height, left : left + block.width]
+    return np.where(near, flags | _NEAR_CLOUD, flags)
 
 
 def _number_or_pixels(source: RasterSource | float, work: SceneWork, block: Block, *, needed: bool) -> Pixels | float:
