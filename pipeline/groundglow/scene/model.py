@@ -10,7 +10,7 @@ from typing import Literal
 
 from groundglow.raster.band import RasterSource
 from groundglow.scene.quality import QualityRule
-from groundglow.scene.sensor import Sensor, SensorBand, TwoConstants
+from groundglow.scene.radiometer import Sensor, SensorBand, TwoConstants
 
 ThermalQuantity = Literal["counts", "radiance", "brightness-temperature", "object-temperature"]
 

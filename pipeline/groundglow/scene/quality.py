@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -53,6 +54,7 @@ def lookup_table(rules: Sequence[QualityRule], bits: int) -> Flags:
     Parameters
     ----------
     rules : sequence of QualityRule
+        Each adds its flag where it holds.
     bits : int
         8 or 16.
 
@@ -61,7 +63,14 @@ def lookup_table(rules: Sequence[QualityRule], bits: int) -> Flags:
     uint16 array (2**bits,)
         The flags that all rules together set for each word.
     """
-    return flags_of_codes(np.arange(1 << bits, dtype=np.uint32), rules)
+    return _lookup_table(tuple(rules), bits)
+
+
+@lru_cache(maxsize=16)
+def _lookup_table(rules: tuple[QualityRule, ...], bits: int) -> Flags:
+    table = _flags(np.arange(1 << bits, dtype=np.int64), rules)
+    table.setflags(write=False)
+    return table
 
 
 def flags_of_codes(codes: NDArray[np.integer], rules: Sequence[QualityRule]) -> Flags:
@@ -72,16 +81,21 @@ def flags_of_codes(codes: NDArray[np.integer], rules: Sequence[QualityRule]) -> 
     codes : integer array, any shape
         Stored words; a negative number is read as its two's complement, bit by bit.
     rules : sequence of QualityRule
+        Each adds its flag where it holds.
 
     Returns
     -------
     uint16 array, same shape
         Flags of :data:`groundglow.quantities.FLAGS`.
     """
-    if codes.dtype in (np.uint8, np.uint16) and codes.size > (1 << 8 * codes.dtype.itemsize):
+    if codes.dtype in (np.uint8, np.uint16):
         return np.take(lookup_table(rules, 8 * codes.dtype.itemsize), codes)
-    words = codes.astype(np.int64)
-    flags = np.zeros(codes.shape, dtype=np.uint16)
+    return _flags(codes.astype(np.int64), rules)
+
+
+def _flags(words: NDArray[np.int64], rules: Sequence[QualityRule]) -> Flags:
+    """All rules, one after the other."""
+    flags = np.zeros(words.shape, dtype=np.uint16)
     for rule in rules:
         flags[_matches(words, rule)] |= np.uint16(FLAG[rule.flag].mask)
     return flags

@@ -1,156 +1,70 @@
-"""Sensors as data: spectral response, calibration, noise and footprint of each thermal band."""
+"""Sensors by name (shipped with the package) or by the path of a sensor file."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+import difflib
+from functools import lru_cache
+from importlib import resources
+from pathlib import Path
 
+from groundglow.documents import checked, read_toml
 from groundglow.errors import ConfigError
-from groundglow.physics.spectral_response import SpectralResponse
-from groundglow.scene.quality import QualityRule
+from groundglow.scene.radiometer import Sensor, SensorBand, TwoConstants
+from groundglow.scene.sensor_document import SensorDocument
+
+__all__ = ["Sensor", "SensorBand", "TwoConstants", "load_sensor", "sensor_names"]
 
 
-@dataclass(frozen=True)
-class TwoConstants:
-    """Published calibration T = K2 / ln(K1 / L + 1).
+def sensor_names() -> tuple[str, ...]:
+    """Names of the shipped sensors, sorted."""
+    files = resources.files("groundglow").joinpath("sensors").iterdir()
+    return tuple(sorted(file.name.removesuffix(".toml") for file in files if file.name.endswith(".toml")))
 
-    Attributes
+
+def load_sensor(name_or_path: str, *, folder: Path | None = None) -> Sensor:
+    """A shipped sensor, or one from a file.
+
+    Parameters
     ----------
-    k1 : float
-        [W m-2 sr-1 um-1]
-    k2 : float
-        [K]
-    source : str
+    name_or_path : str
+        A shipped sensor's name, or the path of a sensor file (ending in .toml).
+    folder : Path, optional
+        Where a relative path starts; default: the working folder.
+
+    Returns
+    -------
+    Sensor
+
+    Raises
+    ------
+    ConfigError
+        If there is no such sensor, or its file is not as it should be.
+    InputError
+        If a response table that the file names cannot be read.
     """
-
-    k1: float
-    k2: float
-    source: str
-
-
-@dataclass(frozen=True)
-class Noise:
-    """Noise-equivalent temperature difference of one pixel.
-
-    Attributes
-    ----------
-    temperature_difference : float
-        One standard deviation. [K]
-    at : float
-        Blackbody temperature at which it is stated. [K]
-    source : str
-    """
-
-    temperature_difference: float
-    at: float
-    source: str
+    if name_or_path.endswith(".toml"):
+        return _read(((folder or Path()) / name_or_path).resolve())
+    names = sensor_names()
+    if name_or_path not in names:
+        near = difflib.get_close_matches(name_or_path, names, n=1)
+        hint = f"Did you mean {near[0]!r}? " if near else ""
+        raise ConfigError(
+            f"there is no sensor {name_or_path!r}",
+            remedy=f"{hint}Shipped are {', '.join(names)}; or name a sensor file ending in .toml",
+        )
+    return _shipped(name_or_path)
 
 
-@dataclass(frozen=True)
-class Calibration:
-    """Absolute calibration uncertainty, one error per band and scene.
-
-    Attributes
-    ----------
-    uncertainty : float
-        One standard deviation. [K]
-    at : float
-        Blackbody temperature at which it is stated. [K]
-    source : str
-    """
-
-    uncertainty: float
-    at: float
-    source: str
+@lru_cache(maxsize=32)
+def _shipped(name: str) -> Sensor:
+    with resources.as_file(resources.files("groundglow").joinpath("sensors")) as folder:
+        return _read(folder / f"{name}.toml")
 
 
-@dataclass(frozen=True)
-class CountScaling:
-    """The sensor's standard scaling of counts, used where a description gives none.
-
-    Attributes
-    ----------
-    scale, offset : float
-        Radiance = scale * counts + offset. [W m-2 sr-1 um-1]
-    nodata, saturation : float or None
-        Stored values.
-    source : str
-    """
-
-    scale: float
-    offset: float
-    nodata: float | None
-    saturation: float | None
-    source: str
-
-
-@dataclass(frozen=True, eq=False)
-class SensorBand:
-    """One thermal band.
-
-    Attributes
-    ----------
-    number : str
-    response : SpectralResponse
-    response_source : str
-    two_constants, noise, calibration, counts : optional
-    saturation_temperature : float or None
-        Brightness temperature above which the band saturates. [K]
-    calibrated_range : tuple of float or None
-        Brightness temperatures within which the calibration holds. [K]
-    """
-
-    number: str
-    response: SpectralResponse
-    response_source: str
-    two_constants: TwoConstants | None = None
-    noise: Noise | None = None
-    calibration: Calibration | None = None
-    counts: CountScaling | None = None
-    saturation_temperature: float | None = None
-    calibrated_range: tuple[float, float] | None = None
-
-
-@dataclass(frozen=True, eq=False)
-class Sensor:
-    """One radiometer.
-
-    Attributes
-    ----------
-    name, title, source : str
-    native_footprint : float or None
-        Size of the sensor's own pixel on the ground. [m]
-    calibration_correlation : float
-        Correlation of the bands' calibration errors within one scene.
-    bands : mapping of str to SensorBand
-        By band number, in the file's order.
-    reflective : mapping of str to str
-        Band numbers of "red" and "near_infrared", where the sensor has them.
-    quality_layouts : mapping of str to tuple of QualityRule
-        How to read the agency's quality rasters, by the layout's name.
-    """
-
-    name: str
-    title: str
-    source: str
-    native_footprint: float | None
-    calibration_correlation: float
-    bands: Mapping[str, SensorBand]
-    reflective: Mapping[str, str]
-    quality_layouts: Mapping[str, tuple[QualityRule, ...]]
-
-    def band(self, number: str) -> SensorBand:
-        """The band of that number.
-
-        Raises
-        ------
-        ConfigError
-            If the sensor has none; the message lists all numbers.
-        """
-        try:
-            return self.bands[number]
-        except KeyError:
-            raise ConfigError(
-                f"the sensor {self.name} has no thermal band {number!r}",
-                remedy=f"Choose from: {', '.join(self.bands)}",
-            ) from None
+def _read(path: Path) -> Sensor:
+    """A sensor file, read and checked."""
+    document = checked(SensorDocument, read_toml(path), where=str(path))
+    try:
+        return document.sensor(path.parent)
+    except ConfigError as error:
+        raise ConfigError(error.what, where=str(path)) from error
