@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import ast
 import csv
 import json
 import subprocess
@@ -155,6 +156,16 @@ def test_sun_elevation_is_that_of_the_place_and_time() -> None:
     assert toml(DEMO / "scene.toml")["scene"]["sun_elevation"] == pytest.approx(
         np.degrees(np.arcsin(sine)), abs=0.7
     )
+
+
+def test_the_script_shares_only_constants_with_the_package() -> None:
+    shared = set()
+    for path in DEMO.glob("*.py"):
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            names = [alias.name for alias in node.names] if isinstance(node, ast.Import) else []
+            names += [node.module or ""] if isinstance(node, ast.ImportFrom) else []
+            shared |= {name for name in names if name.split(".")[0] == "groundglow"}
+    assert shared == {"groundglow.physics.constants"}
 
 
 # ---- the ground
