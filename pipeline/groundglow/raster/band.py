@@ -31,6 +31,8 @@ class RasterSource:
         numbers and pixels that a mask band hides never have a value.
     scale, offset : float or None
         Physical value = scale * stored + offset; None takes what the file itself says, else 1 and 0.
+    shift : float
+        Added to the physical value, for example 273.15 where the file says degrees Celsius.
     saturation : float or None
         Stored value from which on the band is saturated.
     indirect : bool
@@ -43,6 +45,7 @@ class RasterSource:
     nodata: float | None = None
     scale: float | None = None
     offset: float | None = None
+    shift: float = 0.0
     saturation: float | None = None
     indirect: bool = False
 

@@ -124,6 +124,7 @@ def _physical(stored: Stored, source: RasterSource, dataset: DatasetReader) -> P
     index = source.band - 1
     scale = float(dataset.scales[index]) if source.scale is None else source.scale
     offset = float(dataset.offsets[index]) if source.offset is None else source.offset
+    offset += source.shift
     nodata = _nodata(source, dataset)
     if stored.dtype.kind in "iu" and stored.dtype.itemsize <= 2:
         table = _table(stored.dtype.str, scale, offset, nodata)

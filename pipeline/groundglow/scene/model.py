@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from datetime import datetime
-from types import MappingProxyType
 from typing import Literal
 
 from groundglow.raster.band import RasterSource
@@ -172,8 +171,8 @@ class Scene:
     land_cover: RasterSource | None = None
     water_vapour: RasterSource | float | None = None
     quality: QualityRaster | None = None
-    reflectance: Mapping[str, Reflectance] = field(default_factory=lambda: MappingProxyType({}))
-    emissivity: Mapping[str, EmissivityRaster] = field(default_factory=lambda: MappingProxyType({}))
+    reflectance: Mapping[str, Reflectance] = field(default_factory=dict)
+    emissivity: Mapping[str, EmissivityRaster] = field(default_factory=dict)
     origin: str = ""
     notes: tuple[str, ...] = ()
 
