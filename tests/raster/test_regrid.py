@@ -7,7 +7,6 @@ from pathlib import Path
 import numpy as np
 import pytest
 from affine import Affine
-from painted_rasters import UTM, grid, pixel_centres, read_all, whole, write
 from rasterio.crs import CRS
 from rasterio.warp import transform as transform_points
 
@@ -15,6 +14,7 @@ from groundglow.errors import ConfigError
 from groundglow.raster.grid import Block, Grid
 from groundglow.raster.relation import AlongAxes, OnLattice, Otherwise, relation
 from groundglow.raster.source import RasterSource, read_block, read_codes
+from painted_rasters import UTM, grid, pixel_centres, read_all, whole, write
 
 TARGET = grid(61, 47)
 WEST_ZONE = CRS.from_epsg(32631)
