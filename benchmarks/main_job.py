@@ -95,6 +95,12 @@ def paint_inputs(folder: Path, size: int) -> None:
             raster.write(pixels, 1)
 
 
+DECODE_SCRIPT = """
+import sys, numpy as np, rasterio
+with rasterio.open(f"{sys.argv[1]}/out/bench/{sys.argv[2]}.tif") as raster:
+    np.save(f"{sys.argv[1]}/{sys.argv[2]}.npy", raster.read(1))
+"""
+
 GDAL_SCRIPT = """
 import sys, numpy as np, rasterio
 from pathlib import Path
@@ -161,18 +167,22 @@ def main() -> None:
     """Run the three programs and print times, memory and ratios."""
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("--size", type=int, default=6144, help="edge of the square scene in pixels")
+    parser.add_argument("--paint", type=Path, help=argparse.SUPPRESS)
     parser.add_argument("--repeat", type=int, default=3, help="rounds; the medians are compared")
     options = parser.parse_args()
+    if options.paint:
+        paint_inputs(options.paint, options.size)
+        return
     with tempfile.TemporaryDirectory() as name:
         folder = Path(name)
-        paint_inputs(folder, options.size)
+        # In a process of its own: a child's peak memory begins with that of the process that starts it.
+        subprocess.run([sys.executable, __file__, "--size", str(options.size), "--paint", name], check=True)
         (folder / "scene.toml").write_text(SCENE)
         (folder / "job.toml").write_text(JOB)
         job = [sys.executable, "-m", "groundglow", "run", str(folder / "job.toml"), "--quiet"]
         timed(job)  # compiles the kernels, once per installation
         for layer in LAYERS:
-            with rasterio.open(folder / "out" / "bench" / f"{layer}.tif") as raster:
-                np.save(folder / f"{layer}.npy", raster.read(1))
+            subprocess.run([sys.executable, "-c", DECODE_SCRIPT, str(folder), layer], check=True)
         programs = {
             "the job": job,
             "(a) GDAL": [sys.executable, "-c", GDAL_SCRIPT, str(folder), *LAYERS],

@@ -21,6 +21,7 @@ _ASSUMED = np.uint16(FLAG["emissivity_assumed"].mask)
 _BROADBAND_ASSUMED = np.uint16(FLAG["broadband_emissivity_assumed"].mask)
 _BARE_METAL = np.uint16(FLAG["bare_metal"].mask)
 _IMPOSSIBLE = np.uint16(FLAG["impossible"].mask)
+_NO_DATA = np.uint16(FLAG["no_data"].mask)
 _METAL_BELOW = 0.7
 
 
@@ -109,8 +110,10 @@ class RasterSourceOfEmissivity:
         """See :class:`EmissivitySource`; values that no surface can have become NaN and are flagged."""
         values = read_block(self.source, grid, block, resampling="continuous").values
         possible = (values > 0.0) & (values <= 1.0)
+        missing = np.isnan(values)
         flags = np.full(values.shape, _BROADBAND_ASSUMED, np.uint16)
-        flags[~possible] |= _IMPOSSIBLE
+        flags[missing] |= _NO_DATA
+        flags[~possible & ~missing] |= _IMPOSSIBLE
         flags[possible & (values < _METAL_BELOW)] |= _BARE_METAL
         values = np.where(possible, values, np.float32(np.nan))
         return EmissivityFields(

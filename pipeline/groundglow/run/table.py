@@ -40,7 +40,7 @@ def outcome_table(outcomes: Sequence[SceneOutcome], seconds: float) -> str:
             lines.append(
                 f"{outcome.name}: {layer} less its known values: mean {error.bias:+.3f}, "
                 f"standard deviation {error.standard_deviation:.3f}, "
-                f"root mean square {error.root_mean_square:.3f} over {error.count} pixels"
+                f"root mean square {error.root_mean_square:.3f} over {error.count} clear pixels"
             )
     if len(outcomes) > 1:
         lines.append(f"{len(outcomes)} scenes in {seconds:.1f} s")

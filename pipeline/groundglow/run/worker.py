@@ -40,6 +40,8 @@ _SATURATED = np.uint16(FLAG["saturated"].mask)
 _INTERPOLATED = np.uint16(FLAG["interpolated"].mask)
 _CLOUD = np.uint16(FLAG["cloud"].mask)
 _NEAR_CLOUD = np.uint16(FLAG["near_cloud"].mask)
+# Where the sensor did not see the ground, a comparison with known ground says nothing.
+_SPOILED = np.uint16(sum(FLAG[name].mask for name in ("no_data", "saturated", "cloud", "thin_cloud")))
 _OUTSIDE_VALIDITY = np.uint16(FLAG["atmosphere_outside_validity"].mask)
 
 
@@ -150,7 +152,7 @@ def work_block(work: SceneWork, block: Block) -> BlockResult:
             maps[name][rows, columns] = found[name]
     for values in maps.values():
         mask_flagged(values, flags, work.mask)
-    errors = tuple(_errors(work, block, maps))
+    errors = tuple(_errors(work, block, maps, flags))
     encoded = {name: encode_block(maps[name], block, work.grid, work.formats[name]) for name in names}
     encoded["quality"] = encode_block(flags, block, work.grid, work.formats["quality"])
     return BlockResult(block, encoded, errors)
@@ -266,11 +268,15 @@ def _tiles(block: Block) -> Iterator[tuple[slice, slice]]:
             )
 
 
-def _errors(work: SceneWork, block: Block, maps: Mapping[str, Pixels]) -> Iterator[ErrorSums]:
-    """Map minus reference, summed a tile."""
+def _errors(
+    work: SceneWork, block: Block, maps: Mapping[str, Pixels], flags: Flags
+) -> Iterator[ErrorSums]:
+    """Map minus reference over clear pixels, summed a tile."""
+    spoiled = (flags & _SPOILED) != 0
     for name, source in work.references.items():
         reference = read_block(source, work.grid, block, resampling="continuous").values
         difference = maps[name].astype(np.float64) - reference
+        difference[spoiled] = np.nan
         for rows, columns in _tiles(block):
             part = difference[rows, columns]
             known = part[np.isfinite(part)]
