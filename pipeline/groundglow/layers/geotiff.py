@@ -8,7 +8,6 @@ behind it in their final order. The file bears its own name only when it is comp
 from __future__ import annotations
 
 import contextlib
-import errno
 import hashlib
 import os
 import struct
@@ -18,24 +17,15 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import IO
 
-from groundglow.errors import DomainError, OutputError
+from groundglow.errors import DomainError
 from groundglow.layers.encode import EncodedBlock
+from groundglow.layers.files import flush_folder, output_errors, part_of
 from groundglow.layers.layer_format import LayerFormat
 from groundglow.layers.pyramid import Pyramid, TileEncoder, level_shapes, tile_counts
 from groundglow.layers.statistics import LayerStatistics, StatisticsCollector
 from groundglow.layers.tags import LayerText, describing_tags
 from groundglow.layers.tiff_structure import FOUR_GIGABYTES, Level, file_header
 from groundglow.raster.grid import Grid
-
-_REMEDIES = {
-    errno.ENOSPC: "Free some space (twice the layers' size is needed in passing) or choose another folder",
-    errno.EDQUOT: "The quota is used up: free some space or choose another folder",
-    errno.EFBIG: "The system limits the size of files here: raise the limit or choose another folder",
-    errno.EACCES: "Give the user that runs this the right to write there, or choose another folder",
-    errno.EPERM: "Give the user that runs this the right to write there, or choose another folder",
-    errno.EROFS: "The file system is read-only: choose another folder",
-    errno.ENOENT: "Create the folder first",
-}
 
 
 @dataclass(frozen=True)
@@ -67,18 +57,6 @@ class LayerSummary:
     statistics: LayerStatistics
     layer_format: LayerFormat
     text: LayerText
-
-
-@contextlib.contextmanager
-def output_errors(path: Path) -> Iterator[None]:
-    """Turn what the operating system says about writing into an error for the user."""
-    try:
-        yield
-    except OSError as error:
-        reason = os.strerror(error.errno) if error.errno else str(error)
-        raise OutputError(
-            f"cannot be written: {reason}", where=str(path), remedy=_REMEDIES.get(error.errno or 0)
-        ) from error
 
 
 class LayerWriter:
@@ -179,15 +157,14 @@ class LayerWriter:
         statistics = self._statistics.result()
         described = describing_tags(self.grid, self.layer_format, self.text, statistics)
         header = file_header(levels, self.layer_format, described, bigtiff_above=self._bigtiff_above)
-        # Always the same name: what a killed run left there is overwritten by the next.
-        self._part = self.path.with_name(f".{self.path.name}.part")
+        self._part = part_of(self.path)
         try:
             with output_errors(self.path):
                 size, checksum = self._write(self._part, header)
                 self._part.replace(self.path)
                 self._part = None
                 if self._durable:
-                    _flush_folder(self.path.parent)
+                    flush_folder(self.path.parent)
         finally:
             self.abandon()
         return LayerSummary(
@@ -242,13 +219,3 @@ class LayerWriter:
                 target.flush()
                 os.fsync(target.fileno())
         return size, digest.hexdigest()
-
-
-def _flush_folder(folder: Path) -> None:
-    """Make a rename within a folder outlast a loss of power, where the system can open folders."""
-    if hasattr(os, "O_DIRECTORY"):
-        handle = os.open(folder, os.O_RDONLY | os.O_DIRECTORY)
-        try:
-            os.fsync(handle)
-        finally:
-            os.close(handle)
