@@ -5,7 +5,7 @@ from __future__ import annotations
 from datetime import UTC, datetime
 from typing import Annotated, Literal
 
-from pydantic import Field, field_validator, model_validator
+from pydantic import Discriminator, Field, Tag, field_validator, model_validator
 
 from groundglow.documents import Document
 from groundglow.scene.rule_document import RuleDocument
@@ -58,6 +58,17 @@ class RasterDocument(Document):
         if scale == 0.0:
             raise ValueError("must not be 0: every pixel would get the same value")
         return scale
+
+
+def _number_or_raster(value: object) -> str:
+    """Which of the two forms a field takes, so that messages speak of that one only."""
+    return "raster" if isinstance(value, dict | RasterDocument) else "number"
+
+
+_Raster = Annotated[RasterDocument, Tag("raster")]
+AngleField = Annotated[Annotated[Angle, Tag("number")] | _Raster, Discriminator(_number_or_raster)]
+HeightField = Annotated[Annotated[Height, Tag("number")] | _Raster, Discriminator(_number_or_raster)]
+ColumnField = Annotated[Annotated[Column, Tag("number")] | _Raster, Discriminator(_number_or_raster)]
 
 
 class CameraDocument(Document):
@@ -178,16 +189,16 @@ class AcquisitionDocument(Document):
     sensor: str = Field(
         min_length=1, description="Name of a shipped sensor, or path of a sensor file (.toml)."
     )
-    view_zenith_angle: Angle | RasterDocument = Field(
+    view_zenith_angle: AngleField = Field(
         0.0,
         description="Angle of the line of sight from the vertical, at the surface: number or raster. [deg]",
     )
     sun_elevation: SunElevation | None = Field(None, description="[deg]")
-    elevation: Height | RasterDocument | None = Field(
+    elevation: HeightField | None = Field(
         None, description="Ground height above sea level: number or raster. [m]"
     )
     land_cover: RasterDocument | None = Field(None, description="Raster of land-cover codes.")
-    water_vapour: Column | RasterDocument | None = Field(
+    water_vapour: ColumnField | None = Field(
         None, description="Column water vapour: number or raster. [kg m-2]"
     )
 
