@@ -208,7 +208,7 @@ def test_a_fingerprint_is_size_and_sha256(tmp_path: Path) -> None:
 
 def test_masks_beside_a_raster_belong_to_it(tmp_path: Path) -> None:
     path = painted(tmp_path / "one.tif")
-    with rasterio.open(path, "r+") as dataset:
+    with rasterio.Env(GDAL_TIFF_INTERNAL_MASK=False), rasterio.open(path, "r+") as dataset:
         dataset.write_mask(np.ones(HERE.shape, dtype=bool))
     assert belonging_files(path) == (path, path + ".msk")
 
