@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+
 from groundglow.physics.band_table import table_from_response
 from groundglow.physics.flux import emitted_flux, leaving_flux, net_longwave_flux
 from groundglow.physics.spectral_response import top_hat
@@ -79,7 +80,9 @@ def statement_of(air: np.ndarray, chosen: ChainSettings) -> tuple[Air, list[AirC
         parts = (air[start + count // 2], air[start + count], air[start + count + 1])
         changes.append(AirChange(*(part.astype(np.float64) for part in parts)))
     nodes = chosen.weighting.astype(np.float64)
-    return Air(*(part.astype(np.float64) for part in (air[:count], air[count], air[count + 1])), nodes), changes
+    return Air(
+        *(part.astype(np.float64) for part in (air[:count], air[count], air[count + 1])), nodes
+    ), changes
 
 
 @pytest.mark.parametrize(
@@ -120,7 +123,9 @@ def test_kernels_equal_the_numpy_statements(response, weighting) -> None:
         maps["leaving_flux"], leaving_flux(emissivity.broadband, expected.temperature, sky), rtol=4e-5
     )
     np.testing.assert_allclose(
-        maps["net_longwave_flux"], net_longwave_flux(emissivity.broadband, expected.temperature, sky), atol=0.02
+        maps["net_longwave_flux"],
+        net_longwave_flux(emissivity.broadband, expected.temperature, sky),
+        atol=0.02,
     )
 
 
@@ -155,7 +160,9 @@ def test_more_radiance_never_maps_colder() -> None:
     assert result.ravel()[-2] == pytest.approx(1300.0, abs=0.1)
 
 
-@pytest.mark.parametrize(("level", "why"), [(0.5, "the air alone sends more"), (-1.0, "negative radiance"), (1e4, "hot")])
+@pytest.mark.parametrize(
+    ("level", "why"), [(0.5, "the air alone sends more"), (-1.0, "negative radiance"), (1e4, "hot")]
+)
 def test_radiance_no_ground_can_send_is_impossible_and_carries_no_number(level: float, why: str) -> None:
     chosen = settings()
     emissivity, _ = ground()

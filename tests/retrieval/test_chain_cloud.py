@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from groundglow.retrieval.chain_cloud import near_cloud
 from scipy.ndimage import distance_transform_edt
+
+from groundglow.retrieval.chain_cloud import near_cloud
 
 NO_HALO = (0, 0, 0, 0)
 
