@@ -9,6 +9,7 @@ import pytest
 import rasterio
 
 from groundglow.errors import InputError
+from groundglow.raster.decode import KINDS, decode, decode_reference
 from groundglow.raster.source import RasterSource, read_block, read_codes
 from painted_rasters import grid, read_all, whole, write
 
@@ -126,3 +127,25 @@ def test_codes_stored_as_whole_floats_are_taken_and_fractions_refused(tmp_path: 
     broken = write(tmp_path / "u.tif", stored + np.float32(0.5), HERE)
     with pytest.raises(InputError, match="holds fractions where whole codes are needed"):
         read_codes(RasterSource(broken), HERE, whole(HERE))
+
+
+@pytest.mark.parametrize("kind", KINDS)
+def test_the_kernel_and_the_readable_statement_are_equal(kind: str) -> None:
+    rng = np.random.default_rng(3)
+    if kind == "float32":
+        stored = rng.uniform(-1e4, 1e4, (37, 53)).astype(np.float32)
+        stored[0, :5] = [np.nan, np.inf, -np.inf, 3.4e38, 0.0]
+    else:
+        limits = np.iinfo(kind)
+        stored = rng.integers(limits.min, limits.max, (37, 53), endpoint=True).astype(kind)
+    for settings in (
+        (3.342e-4, 0.1, float(stored[5, 5]), 100.0),
+        (1.0, 0.0, np.nan, np.inf),
+        (2.0, -1e38, 0.0, 7.5),
+    ):
+        values = np.empty(stored.shape, dtype=np.float32)
+        saturated = np.empty(stored.shape, dtype=np.bool_)
+        decode(stored, *settings, values, saturated)
+        wanted, wanted_saturated = decode_reference(stored, *settings)
+        assert values.tobytes() == wanted.tobytes()
+        np.testing.assert_array_equal(saturated, wanted_saturated)

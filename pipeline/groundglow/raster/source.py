@@ -11,16 +11,21 @@ asked for: all geometry is computed from absolute row and column numbers.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from typing import TYPE_CHECKING
+
 import numpy as np
 from rasterio.windows import Window
 
 from groundglow.errors import ConfigError
 from groundglow.raster.band import BlockRead, CodeRead, Convert, RasterSource
-from groundglow.raster.footprint import footprints
 from groundglow.raster.grid import Block, Grid
 from groundglow.raster.open import describe_raster, grid_of
-from groundglow.raster.relation import OnLattice, relation
+from groundglow.raster.relation import AlongAxes, OnLattice, Otherwise, relation
 from groundglow.raster.window import read_stored_codes, read_values
+
+if TYPE_CHECKING:
+    from groundglow.raster.footprint import Footprint
 
 __all__ = ["BlockRead", "CodeRead", "Convert", "RasterSource", "read_block", "read_codes", "source_grid"]
 
@@ -89,7 +94,7 @@ def read_block(
                 saturated[at] = part_saturated
         return BlockRead(values, None, saturated)
     mixed = np.zeros(shape, dtype=np.bool_)
-    for footprint in footprints(related, block, resampling):
+    for footprint in _footprints(related, block, resampling):
         part, part_saturated = read_values(source, footprint.window)
         at = _place(block, footprint.piece)
         values[at], mixed[at] = footprint.mean(part if convert is None else convert(part))
@@ -136,11 +141,18 @@ def read_codes(source: RasterSource, grid: Grid, block: Block, *, resampling: st
         codes[at], valid[at] = part, part_valid
         return CodeRead(codes, valid, None)
     chosen, mixed = np.zeros(shape, dtype=np.int64), np.zeros(shape, dtype=np.bool_)
-    for footprint in footprints(related, block, resampling):
+    for footprint in _footprints(related, block, resampling):
         part, part_valid = read_stored_codes(source, footprint.window)
         at = _place(block, footprint.piece)
         chosen[at], valid[at], mixed[at] = footprint.majority(part.astype(np.int64), part_valid)
     return CodeRead(chosen, valid, mixed)
+
+
+def _footprints(related: AlongAxes | Otherwise, block: Block, purpose: str) -> Iterator[Footprint]:
+    """The footprints of a block; the module and its kernels load where grids differ only."""
+    from groundglow.raster.footprint import footprints  # noqa: PLC0415  (kernels the usual run never needs)
+
+    return footprints(related, block, purpose)
 
 
 def _check_choice(found: str, known: tuple[str, ...]) -> None:

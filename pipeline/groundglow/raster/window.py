@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -14,6 +13,7 @@ from rasterio.windows import Window
 
 from groundglow.errors import InputError
 from groundglow.raster.band import Mask, Pixels, RasterSource
+from groundglow.raster.decode import KINDS, decode, decode_reference
 from groundglow.raster.environment import gdal_environment
 from groundglow.raster.open import open_raster, unreadable
 
@@ -44,13 +44,12 @@ def read_values(source: RasterSource, window: Window) -> tuple[Pixels, Mask | No
     """
     dataset = open_raster(source.path, indirect=source.indirect)
     stored = _stored(dataset, source, window)
-    values = _physical(stored, source, dataset)
+    values, saturated = _physical(stored, source, dataset)
     hidden = _hidden(dataset, source, window)
     if hidden is not None:
         values[hidden] = np.nan
-    if source.saturation is None:
-        return values, None
-    return values, np.asarray(stored >= source.saturation) & np.isfinite(values)
+        saturated &= ~hidden
+    return values, None if source.saturation is None else saturated
 
 
 def read_stored_codes(source: RasterSource, window: Window) -> tuple[NDArray[np.integer], Mask]:
@@ -119,41 +118,29 @@ def _hidden(dataset: DatasetReader, source: RasterSource, window: Window) -> Mas
         raise unreadable(source.path, error) from error
 
 
-def _physical(stored: Stored, source: RasterSource, dataset: DatasetReader) -> Pixels:
-    """Scale times stored plus offset in double precision, rounded once."""
+def _physical(stored: Stored, source: RasterSource, dataset: DatasetReader) -> tuple[Pixels, Mask]:
+    """Physical values, and where the band is saturated."""
     index = source.band - 1
     scale = float(dataset.scales[index]) if source.scale is None else source.scale
     offset = float(dataset.offsets[index]) if source.offset is None else source.offset
-    offset += source.shift
     nodata = _nodata(source, dataset)
-    if stored.dtype.kind in "iu" and stored.dtype.itemsize <= 2:
-        table = _table(stored.dtype.str, scale, offset, nodata)
-        return np.take(table, stored.view(f"u{stored.dtype.itemsize}"))
-    missing = None
-    if nodata is not None and not np.isnan(nodata):
-        with np.errstate(over="ignore"):
-            missing = np.asarray(stored == nodata)
-    if stored.dtype == np.float32 and scale == 1.0 and offset == 0.0:
-        values = stored.astype(np.float32, copy=True)
-    else:
-        with np.errstate(over="ignore", invalid="ignore"):
-            values = (stored.astype(np.float64) * scale + offset).astype(np.float32)
-    if missing is not None:
-        values[missing] = np.nan
-    values[~np.isfinite(values)] = np.nan
-    return values
+    settings = (
+        scale,
+        offset + source.shift,
+        np.nan if nodata is None else _as_stored(nodata, stored.dtype),
+        np.inf if source.saturation is None else source.saturation,
+    )
+    if stored.dtype.name not in KINDS:
+        return decode_reference(stored, *settings)
+    values = np.empty(stored.shape, dtype=np.float32)
+    saturated = np.empty(stored.shape, dtype=np.bool_)
+    decode(stored, *settings, values, saturated)
+    return values, saturated
 
 
-@lru_cache(maxsize=64)
-def _table(dtype: str, scale: float, offset: float, nodata: float | None) -> Pixels:
-    """Physical value of every number that 8 or 16 bits can store, by its unsigned pattern."""
-    kind = np.dtype(dtype)
-    patterns = np.arange(1 << 8 * kind.itemsize, dtype=f"u{kind.itemsize}")
-    stored = patterns.view(kind).astype(np.float64)
-    with np.errstate(over="ignore", invalid="ignore"):
-        table = (stored * scale + offset).astype(np.float32)
-    if nodata is not None:
-        table[stored == nodata] = np.nan
-    table[~np.isfinite(table)] = np.nan
-    table.setflags(write=False)
-    return table
+def _as_stored(nodata: float, kind: np.dtype[Any]) -> float:
+    """A nodata value as the file's floating-point type holds it."""
+    if kind != np.float32:
+        return nodata
+    with np.errstate(over="ignore"):
+        return float(np.float32(nodata))
