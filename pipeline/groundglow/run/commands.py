@@ -14,6 +14,7 @@ from types import FrameType
 from groundglow import __version__
 from groundglow.errors import ConfigError, GroundglowError
 from groundglow.run.config import Job, read_job
+from groundglow.run.fingerprint import scene_fingerprint
 from groundglow.run.outcome import SceneOutcome, describe_grid
 from groundglow.run.plan import ScenePlan, plan_scene
 from groundglow.run.progress import progress_for
@@ -51,7 +52,8 @@ def run_job(
         for scene_path in scene_paths(job, path.parent):
             try:
                 plan = plan_scene(job, path.parent, open_scene(str(scene_path)))
-                outcome = run_scene(plan, folder, chosen, progress, durable=job.run.durable)
+                identity = scene_fingerprint(job, plan)
+                outcome = run_scene(plan, identity, folder, chosen, progress, durable=job.run.durable)
             except ConfigError:
                 raise
             except GroundglowError as error:

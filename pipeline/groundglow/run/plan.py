@@ -65,6 +65,19 @@ class ScenePlan:
         """The scene's name, which is its output folder's."""
         return self.scene.name
 
+    def inputs(self) -> list[tuple[str, RasterSource]]:
+        """The rasters that a run reads, each with what it is used for."""
+        work = self.work
+        found: list[tuple[str, RasterSource]] = [("thermal", work.thermal)]
+        if work.quality is not None:
+            found.append(("quality", work.quality.source))
+        for role, source in (("elevation", work.elevation), ("view_zenith_angle", work.view_zenith_angle)):
+            if isinstance(source, RasterSource):
+                found.append((role, source))
+        if work.emissivity is not None:
+            found += [("emissivity", source) for source in work.emissivity.rasters()]
+        return found
+
     def peak_mebibytes(self, workers: int) -> float:
         """Estimated peak memory of the process, with that many blocks in flight. [MiB]"""
         largest = max(block.height * block.width for block in self.blocks)

@@ -11,6 +11,7 @@ from groundglow.layers.geotiff import LayerSummary, LayerWriter
 from groundglow.layers.tags import text_of
 from groundglow.raster.environment import gdal_environment
 from groundglow.run.companions import write_companions
+from groundglow.run.fingerprint import SceneFingerprint
 from groundglow.run.outcome import SceneOutcome, outcome_of
 from groundglow.run.plan import ScenePlan
 from groundglow.run.progress import Progress
@@ -20,13 +21,21 @@ from groundglow.run.worker import BlockResult, ErrorSums, work_block
 
 
 def run_scene(
-    plan: ScenePlan, output: Path, scheduler: Scheduler, progress: Progress, *, durable: bool = False
+    plan: ScenePlan,
+    fingerprint: SceneFingerprint,
+    output: Path,
+    scheduler: Scheduler,
+    progress: Progress,
+    *,
+    durable: bool = False,
 ) -> SceneOutcome:
     """Make all layers of one scene and put them in place.
 
     Parameters
     ----------
     plan : ScenePlan
+    fingerprint : SceneFingerprint
+        Of everything that decides the result; written into the Item.
     output : Path
         The locked output folder.
     scheduler : Scheduler
@@ -52,7 +61,7 @@ def run_scene(
             plan.name, plan.work.grid, summaries, errors,
             folder=str(output / plan.name), seconds=time.perf_counter() - began, notes=plan.scene.notes,
         )  # fmt: skip
-        write_companions(plan, folder, summaries, outcome)
+        write_companions(plan, folder, summaries, outcome, fingerprint, durable=durable)
         publish(output, plan.name, durable=durable)
     except BaseException:
         # Interrupts included: a reader must never find half a scene.
