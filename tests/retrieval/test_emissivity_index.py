@@ -90,8 +90,8 @@ def test_the_cavity_term_gives_the_published_line() -> None:
 @pytest.mark.parametrize(
     ("name", "index", "expected"),
     [
-        # Source: Skokovic et al. (2014), Landsat 8: B10 0.979 - 0.046 red | 0.971 (1 - Pv) + 0.987 Pv | 0.987;
-        # B11 0.982 - 0.027 red | 0.977 (1 - Pv) + 0.989 Pv | 0.989 (from memory).
+        # Source: Skokovic et al. (2014), Landsat 8: B10 0.979 - 0.046 red | 0.971 (1 - Pv) + 0.987 Pv |
+        # 0.987; B11 0.982 - 0.027 red | 0.977 (1 - Pv) + 0.989 Pv | 0.989 (from memory).
         ("landsat-8-10", 0.1, 0.979 - 0.046 * 0.18),
         ("landsat-8-10", 0.35, 0.971 * 0.75 + 0.987 * 0.25),
         ("landsat-8-10", 0.7, 0.987),
@@ -115,8 +115,8 @@ def test_any_band_takes_soil_and_vegetation_of_the_class_table() -> None:
 
 
 @pytest.mark.parametrize(("index", "expected"), [
-    # Source: Van de Griend and Owe (1993), IJRS 14:1119-1131, with the pieces outside 0.157-0.727 as printed in
-    # Environ. Monit. Assess. (2025) 197:243.
+    # Source: Van de Griend and Owe (1993), IJRS 14:1119-1131, with the pieces outside 0.157-0.727 as printed
+    # in Environ. Monit. Assess. (2025) 197:243.
     (0.5, 0.97682), (-0.3, 0.995), (-0.1, 0.970), (0.1, 0.970), (0.8, 0.990),
 ])  # fmt: skip
 def test_logarithmic_form(index: float, expected: float) -> None:
@@ -209,8 +209,8 @@ def test_the_mixture_lies_between_bare_ground_and_vegetation_with_cavities(
 @pytest.mark.parametrize("index", [0.05, 0.25, 0.35, 0.45, 0.8])
 @pytest.mark.parametrize("age", [0.0, 20.0])
 def test_the_stated_uncertainty_is_that_of_drawn_soils_plants_and_covers(index: float, age: float) -> None:
-    # Monte Carlo: soil, vegetation and cover drawn apart; the formula written out anew. An index of three weeks
-    # before leaves the cover so open that the product of its error and the soil's adds up to a tenth.
+    # Monte Carlo: soil, vegetation and cover drawn apart; the formula written out anew. An index of three
+    # weeks before leaves the cover so open that the product of its error and the soil's adds up to a tenth.
     tolerance = 0.05 if age == 0.0 else 0.1
     method = threshold_method(BAND, TABLE, age_in_days=age)
     found = by_threshold(index, method)
