@@ -17,6 +17,7 @@ from groundglow.physics.planck import (
 )
 from groundglow.retrieval.single_channel import (
     Air,
+    Inverse,
     Inversion,
     inverse_of_table,
     invert,
@@ -145,7 +146,7 @@ def test_sensitivities_agree_with_central_differences(
 
 
 @pytest.mark.parametrize(
-    ("radiance", "emissivity", "transmittance", "path", "sky"),
+    "pixel",
     [
         (np.nan, 0.97, 0.8, 1.6, 2.6),
         (9.0, np.nan, 0.8, 1.6, 2.6),
@@ -162,9 +163,9 @@ def test_sensitivities_agree_with_central_differences(
 )
 @pytest.mark.parametrize("inverse", [exact, inverse_of_table(table_from_two_constants(K1, K2))])
 def test_no_value_and_impossible_values_give_no_value(
-    radiance: float, emissivity: float, transmittance: float, path: float, sky: float, inverse: object
+    pixel: tuple[float, float, float, float, float], inverse: Inverse
 ) -> None:
-    assert callable(inverse)
+    radiance, emissivity, transmittance, path, sky = pixel
     found = invert(
         np.array([radiance, 9.0]),
         np.array([emissivity, 0.97]),
