@@ -105,11 +105,11 @@ def brightness_temperature(radiance: Pixels, flags: Flags, settings: ChainSettin
         NaN where the radiance is NaN or no blackbody's between 150 K and 1,500 K. [K]
     """
     result = np.empty_like(radiance)
-    _look_up(radiance, settings.table, settings.table.lowest_radiance, settings.table.highest_radiance, result)
-    low, high = settings.calibrated_range
-    kernels.flag_radiance(
-        radiance, result, _f(low), _f(high), _f(settings.saturation_temperature), flags
+    _look_up(
+        radiance, settings.table, settings.table.lowest_radiance, settings.table.highest_radiance, result
     )
+    low, high = settings.calibrated_range
+    kernels.flag_radiance(radiance, result, _f(low), _f(high), _f(settings.saturation_temperature), flags)
     return result
 
 
@@ -140,48 +140,116 @@ def surface_maps(
     -------
     mapping of str to float32 array
     """
-    shape = radiance.shape
     flags |= emissivity.flags
-    temperature, blackbody, response = (np.empty(shape, np.float32) for _ in range(3))
-    table = settings.table
-    kernels.surface_temperature(
-        radiance, emissivity.band, air, settings.weighting, table.start, table.temperature, table.slope,
-        np.int32(table.first_key), _f(settings.lowest_radiance), _f(settings.highest_radiance),
-        temperature, blackbody, response, flags,
-    )  # fmt: skip
+    found = invert(radiance, flags, emissivity.band, emissivity.band_uncertainty, air=air, settings=settings)
     maps = {
-        "surface_temperature": temperature,
+        "surface_temperature": found.temperature,
         "emissivity": emissivity.band,
         "broadband_emissivity": emissivity.broadband,
         "transmittance": air[settings.weighting.size // 2],
         "path_radiance": air[settings.weighting.size],
         "sky_flux": air[settings.weighting.size + 2],
+        "surface_temperature_uncertainty": found.total,
+        "surface_temperature_uncertainty_pixel": found.pixel,
+        "surface_temperature_uncertainty_scene": found.scene,
     }
+    if "surface_temperature_uncertainty_class" in wanted:
+        maps["surface_temperature_uncertainty_class"] = np.abs(found.surface_class)
+    maps["emitted_flux"], maps["emitted_flux_uncertainty"] = emitted_flux(found, emissivity)
+    if {"leaving_flux", "net_longwave_flux"} & set(wanted):
+        maps["leaving_flux"], maps["net_longwave_flux"] = surface_fluxes(
+            maps["emitted_flux"], emissivity.broadband, maps["sky_flux"]
+        )
+    return maps
+
+
+@dataclass(frozen=True)
+class Inversion:
+    """Surface temperature of one tile and its standard uncertainty, float32 arrays of one shape.
+
+    Attributes
+    ----------
+    temperature : array
+        [K]
+    blackbody, response : array
+        What the air lets through of the blackbody's radiance, and the change of the radiance at the
+        sensor with temperature. [W m-2 sr-1 um-1, W m-2 sr-1 um-1 K-1]
+    pixel, scene, total : array
+        Standard uncertainties: noise; calibration and air; all. [K]
+    surface_class : array
+        Change of the temperature for an emissivity too high by one standard uncertainty (signed). [K]
+    """
+
+    temperature: Pixels
+    blackbody: Pixels
+    response: Pixels
+    pixel: Pixels
+    surface_class: Pixels
+    scene: Pixels
+    total: Pixels
+
+
+def invert(
+    radiance: Pixels,
+    flags: Flags,
+    emissivity: Pixels,
+    uncertainty: Pixels,
+    air: Pixels,
+    settings: ChainSettings,
+) -> Inversion:
+    """Surface temperature of one tile, with its uncertainty by what errors share.
+
+    Parameters
+    ----------
+    radiance : float32 array (rows, columns), C-contiguous
+        [W m-2 sr-1 um-1]
+    flags : uint16 array (rows, columns), C-contiguous
+        Gains the bits that the inversion sets.
+    emissivity, uncertainty : float32 arrays (rows, columns), C-contiguous
+        In the thermal band, and its 1 sigma.
+    air : float32 array (fields, rows, columns), C-contiguous
+        As ``atmosphere.interpolate`` gives it.
+    settings : ChainSettings
+        Of the band.
+
+    Returns
+    -------
+    Inversion
+        NaN where there is no temperature.
+    """
+    shape = radiance.shape
+    temperature, blackbody, response = (np.empty(shape, np.float32) for _ in range(3))
+    table = settings.table
+    kernels.surface_temperature(
+        radiance, emissivity, air, settings.weighting, table.start, table.temperature, table.slope,
+        np.int32(table.first_key), _f(settings.lowest_radiance), _f(settings.highest_radiance),
+        temperature, blackbody, response, flags,
+    )  # fmt: skip
     pixel, surface_class, scene, total = (np.empty(shape, np.float32) for _ in range(4))
     kernels.temperature_uncertainty(
-        temperature, blackbody, response, emissivity.band, emissivity.band_uncertainty, air,
-        np.int32(settings.weighting.size), np.int32(settings.causes), np.full(shape, settings.noise, np.float32),
-        _f(settings.calibration), pixel, surface_class, scene, total,
+        temperature, blackbody, response, emissivity, uncertainty, air,
+        np.int32(settings.weighting.size), np.int32(settings.causes),
+        np.full(shape, settings.noise, np.float32), _f(settings.calibration),
+        pixel, surface_class, scene, total,
     )  # fmt: skip
-    maps["surface_temperature_uncertainty"] = total
-    maps["surface_temperature_uncertainty_pixel"] = pixel
-    if "surface_temperature_uncertainty_class" in wanted:
-        maps["surface_temperature_uncertainty_class"] = np.abs(surface_class)
-    maps["surface_temperature_uncertainty_scene"] = scene
-    emitted, emitted_uncertainty = (np.empty(shape, np.float32) for _ in range(2))
+    return Inversion(temperature, blackbody, response, pixel, surface_class, scene, total)
+
+
+def emitted_flux(found: Inversion, emissivity: EmissivityFields) -> tuple[Pixels, Pixels]:
+    """Emitted flux of one tile and its standard uncertainty, in W m-2."""
+    emitted, uncertainty = (np.empty(found.temperature.shape, np.float32) for _ in range(2))
     kernels.emitted_flux(
-        temperature, pixel, surface_class, scene, emissivity.broadband, emissivity.broadband_shared,
-        emissivity.broadband_own, emitted, emitted_uncertainty,
+        found.temperature, found.pixel, found.surface_class, found.scene, emissivity.broadband,
+        emissivity.broadband_shared, emissivity.broadband_own, emitted, uncertainty,
     )  # fmt: skip
-    maps["emitted_flux"] = emitted
-    maps["emitted_flux_uncertainty"] = emitted_uncertainty
-    if {"leaving_flux", "net_longwave_flux"} & set(wanted):
-        leaving, net = (np.empty(shape, np.float32) for _ in range(2))
-        sky = np.ascontiguousarray(maps["sky_flux"])
-        kernels.surface_fluxes(emitted, emissivity.broadband, sky, leaving, net)
-        maps["leaving_flux"] = leaving
-        maps["net_longwave_flux"] = net
-    return maps
+    return emitted, uncertainty
+
+
+def surface_fluxes(emitted: Pixels, broadband_emissivity: Pixels, sky: Pixels) -> tuple[Pixels, Pixels]:
+    """Leaving flux and net longwave flux (downward positive) of one tile, in W m-2."""
+    leaving, net = (np.empty(emitted.shape, np.float32) for _ in range(2))
+    kernels.surface_fluxes(emitted, broadband_emissivity, np.ascontiguousarray(sky), leaving, net)
+    return leaving, net
 
 
 def mask_flagged(values: Pixels, flags: Flags, mask: int) -> None:
