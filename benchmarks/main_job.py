@@ -165,7 +165,9 @@ def timed(command: list[str]) -> tuple[float, float]:
 
 def main() -> None:
     """Run the three programs and print times, memory and ratios."""
-    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
     parser.add_argument("--size", type=int, default=6144, help="edge of the square scene in pixels")
     parser.add_argument("--paint", type=Path, help=argparse.SUPPRESS)
     parser.add_argument("--repeat", type=int, default=3, help="rounds; the medians are compared")
@@ -198,7 +200,9 @@ def main() -> None:
     middle = {key: statistics.median(values) for key, values in seconds.items()}
     print(f"{options.size} x {options.size} pixels, {os.cpu_count()} cores, median of {options.repeat}")
     for key, value in middle.items():
-        print(f"{key:10s} {value:6.2f} s  peak {memory[key]:5.0f} MiB  the job is {middle['the job'] / value:.2f} of it")
+        print(
+            f"{key:10s} {value:6.2f} s  peak {memory[key]:5.0f} MiB  the job is {middle['the job'] / value:.2f} of it"
+        )
 
 
 if __name__ == "__main__":

@@ -30,7 +30,9 @@ app = typer.Typer(
     no_args_is_help=True,
 )
 
-JobFile = Annotated[Path, typer.Argument(metavar="JOB", help="Job file (TOML); configs/ holds commented examples.")]
+JobFile = Annotated[
+    Path, typer.Argument(metavar="JOB", help="Job file (TOML); configs/ holds commented examples.")
+]
 Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="No progress and no table; errors still show.")]
 Json = Annotated[bool, typer.Option("--json", help="Print the summary as JSON on standard output.")]
 
@@ -44,7 +46,8 @@ def _show_version(value: bool) -> None:
 @app.callback()
 def common(
     version: Annotated[
-        bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Show the version and leave.")
+        bool,
+        typer.Option("--version", callback=_show_version, is_eager=True, help="Show the version and leave."),
     ] = False,
 ) -> None:
     """Calibrated maps of surface temperature and emitted flux from thermal-infrared rasters, unattended."""
@@ -53,8 +56,12 @@ def common(
 @app.command(epilog=EXIT_CODES)
 def run(
     job: JobFile,
-    output: Annotated[Path | None, typer.Option(help="Write here instead of the job's output folder.")] = None,
-    workers: Annotated[int | None, typer.Option(min=1, help="Threads; default: the job's, else all cores.")] = None,
+    output: Annotated[
+        Path | None, typer.Option(help="Write here instead of the job's output folder.")
+    ] = None,
+    workers: Annotated[
+        int | None, typer.Option(min=1, help="Threads; default: the job's, else all cores.")
+    ] = None,
     scheduler: Annotated[
         str, typer.Option(help="'threads', 'processes[:N]', or tcp://host:port of a Dask scheduler.")
     ] = "threads",

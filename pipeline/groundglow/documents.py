@@ -123,7 +123,12 @@ def _without_tags(model: type[BaseModel], place: Sequence[str | int]) -> list[st
             models = {m for m in models if part in _tags(m)} or models
             continue
         kept.append(part)
-        found = {inner for m in models if part in m.model_fields for inner in _models_in(m.model_fields[part].annotation)}
+        found = {
+            inner
+            for m in models
+            if part in m.model_fields
+            for inner in _models_in(m.model_fields[part].annotation)
+        }
         models = found or models
     return kept
 

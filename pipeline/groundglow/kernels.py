@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import logging
 from collections.abc import Callable
+from functools import cache
 from typing import TypeVar
 
 import numba
@@ -17,9 +18,6 @@ import numba
 log = logging.getLogger(__name__)
 
 Function = TypeVar("Function", bound=Callable[..., object])
-
-_told_uncached = False
-
 
 def kernel(*signatures: str, inline: bool = False) -> Callable[[Function], Function]:
     """Compile a function for the given Numba signatures, without the interpreter lock.
@@ -43,20 +41,23 @@ def kernel(*signatures: str, inline: bool = False) -> Callable[[Function], Funct
         options["forceinline"] = True
 
     def compile_it(function: Function) -> Function:
-        global _told_uncached
         chosen = list(signatures) or None
         try:
             return numba.njit(chosen, cache=True, **options)(function)  # type: ignore[no-any-return]
         except (RuntimeError, OSError) as error:
             if isinstance(error, RuntimeError) and "cannot cache" not in str(error):
                 raise
-            if not _told_uncached:
-                log.warning(
-                    "kernels are compiled anew at each start: no cache folder can be written (%s); "
-                    "set NUMBA_CACHE_DIR to a writable folder",
-                    error,
-                )
-                _told_uncached = True
+            _tell_once(str(error))
             return numba.njit(chosen, **options)(function)  # type: ignore[no-any-return]
 
     return compile_it
+
+
+@cache
+def _tell_once(reason: str) -> None:
+    """One line, however many kernels there are."""
+    log.warning(
+        "kernels are compiled anew at each start: no cache folder can be written (%s); "
+        "set NUMBA_CACHE_DIR to a writable folder",
+        reason,
+    )

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -121,7 +122,7 @@ def _quadrature(wavelength: Float, response: Float) -> tuple[Float, Float]:
     """Gauss-Legendre points within the segments and weights that sum to one."""
     pieces = [
         np.linspace(a, b, max(2, int(np.ceil((b - a) / _WIDEST_SEGMENT)) + 1))[:-1]
-        for a, b in zip(wavelength[:-1], wavelength[1:], strict=True)
+        for a, b in pairwise(wavelength)
     ]
     edges = np.concatenate([*pieces, wavelength[-1:]])
     x, w = np.polynomial.legendre.leggauss(_POINTS)

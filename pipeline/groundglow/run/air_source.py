@@ -70,7 +70,8 @@ def _explicit(atmosphere: ExplicitAtmosphere, band: str) -> Air:
         "source": "explicit",
         "reference": atmosphere.reference,
         "uncertainty": {
-            name: getattr(stated, name) for name in ("transmittance", "path_radiance", "sky_radiance", "sky_flux")
+            name: getattr(stated, name)
+            for name in ("transmittance", "path_radiance", "sky_radiance", "sky_flux")
         },
         "correlations": {
             name: {"value": getattr(stated, name), "from": "job file" if name in correlations else "assumed"}

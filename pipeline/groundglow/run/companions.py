@@ -100,5 +100,3 @@ def _record(plan: ScenePlan, outcome: SceneOutcome, fingerprint: SceneFingerprin
         view_zenith_angle=angle if isinstance(angle, float) else None,
         sun_elevation=scene.sun_elevation,
     )
-
-

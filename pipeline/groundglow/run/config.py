@@ -27,7 +27,9 @@ NEEDS_SKY_FLUX = ("sky_flux", "leaving_flux", "net_longwave_flux")
 class Temperature(Document):
     """How surface temperature is found."""
 
-    band: str | None = Field(None, description="Thermal band to use; default: the scene's first thermal band.")
+    band: str | None = Field(
+        None, description="Thermal band to use; default: the scene's first thermal band."
+    )
     method: Literal["single-channel", "water-vapour"] = Field(
         "single-channel",
         description="single-channel inverts the radiative transfer equation with the job's air; water-vapour is "
@@ -39,7 +41,9 @@ class Temperature(Document):
         "or the published two-constant form.",
     )
     lowest: Kelvin = Field(180.0, ge=150.0, le=400.0, description="Colder results are flagged as impossible.")
-    highest: Kelvin = Field(1300.0, ge=250.0, le=1500.0, description="Hotter results are flagged as impossible.")
+    highest: Kelvin = Field(
+        1300.0, ge=250.0, le=1500.0, description="Hotter results are flagged as impossible."
+    )
 
     @model_validator(mode="after")
     def _range(self) -> Temperature:
@@ -54,7 +58,9 @@ class Quality(Document):
     mask: tuple[str, ...] = Field(
         DEFAULT_MASK, description="Flags whose pixels become NaN in every layer but quality."
     )
-    cloud_buffer: Metres = Field(0.0, ge=0.0, le=20000.0, description="Pixels closer to a cloud get 'near_cloud'.")
+    cloud_buffer: Metres = Field(
+        0.0, ge=0.0, le=20000.0, description="Pixels closer to a cloud get 'near_cloud'."
+    )
 
     @field_validator("mask")
     @classmethod
@@ -72,8 +78,12 @@ class Layers(Document):
     compression: Literal["zstd", "deflate"] = Field(
         "zstd", description="zstd is fast and small; deflate opens in programs older than GDAL 2.3."
     )
-    level: int | None = Field(None, ge=1, le=19, description="Compression level; default 1 for zstd, 6 for deflate.")
-    celsius: bool = Field(True, description="Styles and previews label temperature in Celsius; files stay in kelvin.")
+    level: int | None = Field(
+        None, ge=1, le=19, description="Compression level; default 1 for zstd, 6 for deflate."
+    )
+    celsius: bool = Field(
+        True, description="Styles and previews label temperature in Celsius; files stay in kelvin."
+    )
     preview: bool = Field(True, description="Write a PNG preview.")
 
     @field_validator("write")
@@ -97,8 +107,12 @@ class Execution(Document):
     """How the work is cut and spread; never changes a byte of the layers."""
 
     block: int = Field(1024, ge=512, le=4096, multiple_of=512, description="Block edge in pixels.")
-    workers: int | None = Field(None, ge=1, le=256, description="Threads; default: the cores this process may use.")
-    durable: bool = Field(False, description="Flush files to disk before a scene counts as done (power loss).")
+    workers: int | None = Field(
+        None, ge=1, le=256, description="Threads; default: the cores this process may use."
+    )
+    durable: bool = Field(
+        False, description="Flush files to disk before a scene counts as done (power loss)."
+    )
 
 
 class Job(Document):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import Annotated, Literal
 
 from pydantic import Field, field_validator, model_validator
@@ -21,8 +22,12 @@ class AirUncertainty(Document):
     path_radiance: Radiance = Field(0.1, ge=0.0, le=100.0)
     sky_radiance: Radiance = Field(0.15, ge=0.0, le=100.0)
     sky_flux: FluxDensity = Field(10.0, ge=0.0, le=200.0)
-    transmittance_path_correlation: float | None = Field(None, ge=-1.0, le=1.0, description="default: -0.9, assumed")
-    transmittance_sky_correlation: float | None = Field(None, ge=-1.0, le=1.0, description="default: -0.9, assumed")
+    transmittance_path_correlation: float | None = Field(
+        None, ge=-1.0, le=1.0, description="default: -0.9, assumed"
+    )
+    transmittance_sky_correlation: float | None = Field(
+        None, ge=-1.0, le=1.0, description="default: -0.9, assumed"
+    )
     path_sky_correlation: float | None = Field(None, ge=-1.0, le=1.0, description="default: +0.9, assumed")
 
 
@@ -30,7 +35,9 @@ class BandAir(Document):
     """The air in one band: numbers, or values over ground heights."""
 
     band: str
-    transmittance: tuple[Fraction, ...] = Field(description="From the surface to the sensor, above 0 and at most 1.")
+    transmittance: tuple[Fraction, ...] = Field(
+        description="From the surface to the sensor, above 0 and at most 1."
+    )
     path_radiance: tuple[Radiance, ...] = Field(description="Emitted towards the sensor by the air.")
     sky_radiance: tuple[Radiance, ...] = Field(description="Hemispheric: downward irradiance divided by pi.")
     ground_height: tuple[Metres, ...] | None = Field(
@@ -57,7 +64,7 @@ class BandAir(Document):
             if min(getattr(self, name)) < 0.0:
                 raise ValueError(f"{name} must not be negative")
         heights = self.ground_height or ()
-        if any(b <= a for a, b in zip(heights[:-1], heights[1:], strict=True)):
+        if any(b <= a for a, b in pairwise(heights)):
             raise ValueError("ground_height must increase")
         return self
 
@@ -69,7 +76,8 @@ class ExplicitAtmosphere(Document):
     reference: str = Field(min_length=3, description="Where the numbers are from; written into the output.")
     air: Annotated[tuple[BandAir, ...], Field(min_length=1)]
     sky_flux: tuple[FluxDensity, ...] | None = Field(
-        None, description="Broadband downwelling longwave flux, clear sky; a number, or one for each ground height."
+        None,
+        description="Broadband downwelling longwave flux, clear sky; a number, or one for each ground height.",
     )
 
     @field_validator("sky_flux", mode="before")

@@ -17,9 +17,14 @@ class ConstantEmissivity(Document):
     value: Fraction = Field(gt=0.0, le=1.0, description="Emissivity in the thermal band used.")
     uncertainty: Fraction = Field(0.02, ge=0.0, le=0.5, description="1 sigma.")
     broadband: Fraction | None = Field(
-        None, gt=0.0, le=1.0, description="Broadband emissivity for the flux; default: the band's value, flagged."
+        None,
+        gt=0.0,
+        le=1.0,
+        description="Broadband emissivity for the flux; default: the band's value, flagged.",
     )
-    broadband_uncertainty: Fraction = Field(0.03, ge=0.0, le=0.5, description="1 sigma of the broadband rule.")
+    broadband_uncertainty: Fraction = Field(
+        0.03, ge=0.0, le=0.5, description="1 sigma of the broadband rule."
+    )
 
 
 class RasterEmissivity(Document):
@@ -29,7 +34,9 @@ class RasterEmissivity(Document):
     uncertainty: Fraction | None = Field(
         None, ge=0.0, le=0.5, description="1 sigma; default: what the scene file states, else 0.02."
     )
-    broadband_uncertainty: Fraction = Field(0.03, ge=0.0, le=0.5, description="1 sigma of the broadband rule.")
+    broadband_uncertainty: Fraction = Field(
+        0.03, ge=0.0, le=0.5, description="1 sigma of the broadband rule."
+    )
 
 
 Emissivity = Annotated[ConstantEmissivity | RasterEmissivity, Field(discriminator="source")]

@@ -86,7 +86,12 @@ class ConstantSource:
     def describe(self) -> dict[str, object]:
         """See :class:`EmissivitySource`."""
         broadband = self.broadband if self.broadband is not None else "the band's value (assumed)"
-        return {"source": "constant", "value": self.value, "uncertainty": self.uncertainty, "broadband": broadband}
+        return {
+            "source": "constant",
+            "value": self.value,
+            "uncertainty": self.uncertainty,
+            "broadband": broadband,
+        }
 
 
 @dataclass(frozen=True)

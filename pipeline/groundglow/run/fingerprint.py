@@ -88,7 +88,9 @@ def scene_fingerprint(job: Job, plan: ScenePlan) -> SceneFingerprint:
     configuration = job.model_dump(mode="json", exclude=_WITHOUT_EFFECT)
     decisive = {
         "version": __version__,
-        "inputs": sorted((one.role, one.size, one.sha256, one.path if one.sha256 is None else "") for one in inputs),
+        "inputs": sorted(
+            (one.role, one.size, one.sha256, one.path if one.sha256 is None else "") for one in inputs
+        ),
         "configuration": configuration,
         "scene": [plan.scene.name, plan.scene.acquired.isoformat(), plan.scene.sensor.name],
         "work": plain(plan.work),

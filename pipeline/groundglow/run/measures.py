@@ -55,10 +55,14 @@ class Unit:
             match = _TEXT.match(value)
             first = next(iter(known))
             if match is None:
-                raise ConfigError(f"{value!r} is not a number with a unit", remedy=f"Write for example '1 {first}'")
+                raise ConfigError(
+                    f"{value!r} is not a number with a unit", remedy=f"Write for example '1 {first}'"
+                )
             found = match[2] or first
             if found not in known:
-                raise ConfigError(f"the unit {found!r} does not fit here", remedy=f"Known units: {', '.join(known)}")
+                raise ConfigError(
+                    f"the unit {found!r} does not fit here", remedy=f"Known units: {', '.join(known)}"
+                )
             factor, offset = known[found]
             value = float(match[1]) * factor + offset
         if isinstance(value, float) and not math.isfinite(value):
@@ -76,7 +80,9 @@ class Unit:
 
         return core_schema.no_info_before_validator_function(before, handler(source))
 
-    def __get_pydantic_json_schema__(self, schema: CoreSchema, handler: GetJsonSchemaHandler) -> dict[str, Any]:
+    def __get_pydantic_json_schema__(
+        self, schema: CoreSchema, handler: GetJsonSchemaHandler
+    ) -> dict[str, Any]:
         """A number, or a text with a unit."""
         number = handler(schema)
         units = ", ".join(_CONVERSIONS[self.name])

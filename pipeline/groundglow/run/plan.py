@@ -20,6 +20,7 @@ from groundglow.run.air_source import Air, air_of_job
 from groundglow.run.config import Job
 from groundglow.run.config_emissivity import ConstantEmissivity
 from groundglow.run.emissivity_source import ConstantSource, EmissivitySource, RasterSourceOfEmissivity
+from groundglow.run.input_checks import check_inputs
 from groundglow.run.radiometry import chain_settings, radiance_conversion
 from groundglow.run.worker import SceneWork
 from groundglow.scene.model import Scene, ThermalBand
@@ -115,6 +116,7 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
     band = _chosen_band(job, scene)
     info = describe_raster(band.source.path, indirect=band.source.indirect)
     grid = info.grid
+    check_inputs([("thermal", band.source)], grid)
     air = air_of_job(job.atmosphere, band.number)
     weighting = air.grid.surface_temperature if air is not None else np.array([300.0])
     step = _quantisation_step(band, info.dtypes[band.source.band - 1], info.scales[band.source.band - 1])
@@ -148,7 +150,9 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         method["emissivity"] = emissivity.describe()
     if air is not None:
         method["atmosphere"] = air.account
-    return ScenePlan(scene, band, work, tuple(grid.blocks(job.run.block)), air, method)
+    plan = ScenePlan(scene, band, work, tuple(grid.blocks(job.run.block)), air, method)
+    check_inputs(plan.inputs(), grid)
+    return plan
 
 
 def _chosen_band(job: Job, scene: Scene) -> ThermalBand:
@@ -178,7 +182,9 @@ def _quantisation_step(band: ThermalBand, dtype: str, file_scale: float) -> floa
 def _emissivity(job: Job, scene: Scene, band: ThermalBand) -> EmissivitySource:
     chosen = job.emissivity
     if isinstance(chosen, ConstantEmissivity):
-        return ConstantSource(chosen.value, chosen.uncertainty, chosen.broadband, chosen.broadband_uncertainty)
+        return ConstantSource(
+            chosen.value, chosen.uncertainty, chosen.broadband, chosen.broadband_uncertainty
+        )
     raster = scene.emissivity.get(band.number)
     if raster is None:
         raise ConfigError(

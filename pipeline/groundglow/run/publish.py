@@ -127,7 +127,9 @@ def publish(output: Path, name: str, *, durable: bool = False) -> Path:
             shutil.rmtree(aside)
     except OSError as error:
         recover(output)
-        raise OutputError(f"the finished folder cannot be put in place ({error.strerror})", where=str(target)) from error
+        raise OutputError(
+            f"the finished folder cannot be put in place ({error.strerror})", where=str(target)
+        ) from error
     return target
 
 

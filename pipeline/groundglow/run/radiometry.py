@@ -124,5 +124,7 @@ def _radiance_at(table: BandTable, temperature: float) -> float:
     """Radiance at which a band table reaches a temperature."""
     cell = int(np.searchsorted(table.temperature, temperature, side="right")) - 1
     cell = min(max(cell, 0), table.start.size - 1)
-    level = float(table.start[cell]) + (temperature - float(table.temperature[cell])) / float(table.slope[cell])
+    level = float(table.start[cell]) + (temperature - float(table.temperature[cell])) / float(
+        table.slope[cell]
+    )
     return min(max(level, table.lowest_radiance), table.highest_radiance)

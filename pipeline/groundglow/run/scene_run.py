@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import time
 from contextlib import ExitStack
+from dataclasses import dataclass
 from pathlib import Path
 
-from groundglow.errors import OutputError
+from groundglow.errors import InputError, OutputError
 from groundglow.layers.geotiff import LayerSummary, LayerWriter
 from groundglow.layers.tags import text_of
 from groundglow.raster.environment import gdal_environment
@@ -74,6 +75,7 @@ def _make_layers(
     plan: ScenePlan, folder: Path, scheduler: Scheduler, progress: Progress
 ) -> tuple[dict[str, LayerSummary], list[ErrorSums]]:
     errors: list[ErrorSums] = []
+    tally = _EmissivityTally()
     work = plan.work
     with ExitStack() as open_writers, gdal_environment():
         writers = {
@@ -87,14 +89,39 @@ def _make_layers(
             for name, encoded in result.layers.items():
                 writers[name].add(encoded)
             errors.extend(result.errors)
+            tally.add(result)
             progress.advance(result.block.height * result.block.width)
 
         progress.start(plan.name, work.grid.height * work.grid.width)
         try:
             scheduler.spread(work_block, work, plan.blocks, sink)
+            tally.refuse_if_mostly_impossible(plan)
             return {name: writer.finish() for name, writer in writers.items()}, errors
         finally:
             progress.end()
+
+
+@dataclass
+class _EmissivityTally:
+    """How many pixels have an emissivity that no surface can have."""
+
+    seen: int = 0
+    impossible: int = 0
+
+    def add(self, result: BlockResult) -> None:
+        """Take in one block."""
+        self.seen += result.seen
+        self.impossible += result.impossible_emissivity
+
+    def refuse_if_mostly_impossible(self, plan: ScenePlan) -> None:
+        """A few such pixels are flagged; most of a scene is a wrong raster."""
+        if 2 * self.impossible > self.seen and plan.work.emissivity is not None:
+            paths = ", ".join(source.path for source in plan.work.emissivity.rasters())
+            raise InputError(
+                f"the emissivity is not above 0 and at most 1 in {self.impossible} of {self.seen} pixels",
+                where=paths or "emissivity",
+                remedy="Check the raster's scale and offset: an emissivity in percent needs scale = 0.01",
+            )
 
 
 def _refuse_a_full_disk(plan: ScenePlan, output: Path) -> None:

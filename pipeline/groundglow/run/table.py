@@ -10,13 +10,25 @@ from groundglow.run.outcome import SceneOutcome
 def aligned(rows: Sequence[Sequence[str]]) -> str:
     """Rows as columns of even width; the first row is the heading."""
     widths = [max(len(cell) for cell in column) for column in zip(*rows, strict=True)]
-    lines = ["  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip() for row in rows]
+    lines = [
+        "  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip() for row in rows
+    ]
     return "\n".join([lines[0], "  ".join("-" * width for width in widths), *lines[1:]])
 
 
 def outcome_table(outcomes: Sequence[SceneOutcome], seconds: float) -> str:
     """Scene, grid, valid share, temperatures, flux and time of each scene."""
-    heading = ["scene", "status", "grid", "valid %", "min K", "median K", "max K", "emitted flux W m-2", "seconds"]
+    heading = [
+        "scene",
+        "status",
+        "grid",
+        "valid %",
+        "min K",
+        "median K",
+        "max K",
+        "emitted flux W m-2",
+        "seconds",
+    ]
     rows = [heading]
     for outcome in outcomes:
         t = outcome.temperature
@@ -55,7 +67,10 @@ def plan_table(plans: Sequence[Mapping[str, object]]) -> str:
         names = ", ".join(layers) if isinstance(layers, list) else ""
         rows.append(
             [
-                *(str(plan[key]) for key in ("scene", "grid", "band", "blocks", "peak_memory_mib", "disk_mib")),
+                *(
+                    str(plan[key])
+                    for key in ("scene", "grid", "band", "blocks", "peak_memory_mib", "disk_mib")
+                ),
                 names,
             ]
         )

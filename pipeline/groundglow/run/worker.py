@@ -38,6 +38,7 @@ Flags = NDArray[np.uint16]
 
 _SATURATED = np.uint16(FLAG["saturated"].mask)
 _INTERPOLATED = np.uint16(FLAG["interpolated"].mask)
+_IMPOSSIBLE = np.uint16(FLAG["impossible"].mask)
 _CLOUD = np.uint16(FLAG["cloud"].mask)
 _NEAR_CLOUD = np.uint16(FLAG["near_cloud"].mask)
 # Where the sensor did not see the ground, a comparison with known ground says nothing.
@@ -112,11 +113,25 @@ class ErrorSums(NamedTuple):
 
 @dataclass(frozen=True)
 class BlockResult:
-    """What one task gives back."""
+    """What one task gives back.
+
+    Attributes
+    ----------
+    block : Block
+    layers : mapping of str to EncodedBlock
+    errors : tuple of ErrorSums
+        Against known values, one a tile and layer.
+    seen : int
+        Pixels that the sensor saw.
+    impossible_emissivity : int
+        Those among them whose emissivity no surface can have.
+    """
 
     block: Block
     layers: Mapping[str, EncodedBlock]
     errors: tuple[ErrorSums, ...]
+    seen: int
+    impossible_emissivity: int
 
 
 def work_block(work: SceneWork, block: Block) -> BlockResult:
@@ -136,11 +151,11 @@ def work_block(work: SceneWork, block: Block) -> BlockResult:
     InputError
         If a raster cannot be read.
     """
-    radiance, flags = _radiance_and_flags(work, block)
+    radiance, flags = radiance_and_flags(work, block)
     names = [name for name in work.formats if name != "quality"]
     maps = {name: np.empty((block.height, block.width), np.float32) for name in names}
-    air = _AirAndGround.read(work, block)
-    for rows, columns in _tiles(block):
+    air = AirAndGround.read(work, block)
+    for rows, columns in tiles(block):
         tile_radiance = np.ascontiguousarray(radiance[rows, columns])
         tile_flags = np.ascontiguousarray(flags[rows, columns])
         brightness = brightness_temperature(tile_radiance, tile_flags, work.settings)
@@ -152,14 +167,16 @@ def work_block(work: SceneWork, block: Block) -> BlockResult:
             maps[name][rows, columns] = found[name]
     for values in maps.values():
         mask_flagged(values, flags, work.mask)
-    errors = tuple(_errors(work, block, maps, flags))
+    errors = tuple(reference_errors(work, block, maps, flags))
     encoded = {name: encode_block(maps[name], block, work.grid, work.formats[name]) for name in names}
     encoded["quality"] = encode_block(flags, block, work.grid, work.formats["quality"])
-    return BlockResult(block, encoded, errors)
+    seen = np.isfinite(radiance)
+    wrong = 0 if air is None else np.count_nonzero(seen & ((air.emissivity.flags & _IMPOSSIBLE) != 0))
+    return BlockResult(block, encoded, errors, int(np.count_nonzero(seen)), int(wrong))
 
 
 @dataclass(frozen=True)
-class _AirAndGround:
+class AirAndGround:
     """What the tiles of one block share: emissivity, and where the air is looked up."""
 
     stack: AirStack
@@ -171,7 +188,7 @@ class _AirAndGround:
     same_air: dict[tuple[int, ...], Pixels] = field(default_factory=dict)
 
     @staticmethod
-    def read(work: SceneWork, block: Block) -> _AirAndGround | None:
+    def read(work: SceneWork, block: Block) -> AirAndGround | None:
         """Read the inputs of one block; None where only brightness temperature is wanted."""
         if work.air is None or work.emissivity is None:
             return None
@@ -179,7 +196,7 @@ class _AirAndGround:
         angle = _number_or_pixels(work.view_zenith_angle, work, block, needed=work.air.secant.size > 1)
         x, y = map_coordinates(work.grid, block)
         slant = 1.0 / math.cos(math.radians(angle)) if isinstance(angle, float) else secant(angle)
-        return _AirAndGround(work.air, work.emissivity.read(work.grid, block), height, slant, x, y)
+        return AirAndGround(work.air, work.emissivity.read(work.grid, block), height, slant, x, y)
 
     def maps(
         self, work: SceneWork, rows: slice, columns: slice, radiance: Pixels, flags: Flags, names: list[str]
@@ -189,7 +206,6 @@ class _AirAndGround:
         # Where the ground height or the angle is not known, neither is the air.
         flags[np.isnan(air[0])] |= _OUTSIDE_VALIDITY
         return surface_maps(radiance, flags, self.emissivity.window(rows, columns), air, work.settings, names)
-
 
     def air(self, rows: slice, columns: slice) -> Pixels:
         """The air's fields at the pixels of one tile; the same array again where they are the same everywhere."""
@@ -222,7 +238,7 @@ def map_coordinates(grid: Grid, block: Block) -> tuple[NDArray[np.float64], NDAr
     return c + a * across + b * down, f + d * across + e * down
 
 
-def _radiance_and_flags(work: SceneWork, block: Block) -> tuple[Pixels, Flags]:
+def radiance_and_flags(work: SceneWork, block: Block) -> tuple[Pixels, Flags]:
     """Radiance of a block, and the flags that the inputs set."""
     read = read_block(work.thermal, work.grid, block, resampling="continuous", convert=work.convert)
     flags = np.zeros(read.values.shape, np.uint16)
@@ -252,14 +268,16 @@ def _quality_flags(work: SceneWork, quality: QualityRaster, block: Block) -> Fla
     return np.where(near, flags | _NEAR_CLOUD, flags)
 
 
-def _number_or_pixels(source: RasterSource | float, work: SceneWork, block: Block, *, needed: bool) -> Pixels | float:
+def _number_or_pixels(
+    source: RasterSource | float, work: SceneWork, block: Block, *, needed: bool
+) -> Pixels | float:
     if not isinstance(source, RasterSource):
         return float(source)
     # An axis with one node is not looked at: the raster need not be read.
     return read_block(source, work.grid, block, resampling="continuous").values if needed else 0.0
 
 
-def _tiles(block: Block) -> Iterator[tuple[slice, slice]]:
+def tiles(block: Block) -> Iterator[tuple[slice, slice]]:
     for row in range(0, block.height, TILE):
         for column in range(0, block.width, TILE):
             yield (
@@ -268,16 +286,14 @@ def _tiles(block: Block) -> Iterator[tuple[slice, slice]]:
             )
 
 
-def _errors(
-    work: SceneWork, block: Block, maps: Mapping[str, Pixels], flags: Flags
-) -> Iterator[ErrorSums]:
+def reference_errors(work: SceneWork, block: Block, maps: Mapping[str, Pixels], flags: Flags) -> Iterator[ErrorSums]:
     """Map minus reference over clear pixels, summed a tile."""
     spoiled = (flags & _SPOILED) != 0
     for name, source in work.references.items():
         reference = read_block(source, work.grid, block, resampling="continuous").values
         difference = maps[name].astype(np.float64) - reference
         difference[spoiled] = np.nan
-        for rows, columns in _tiles(block):
+        for rows, columns in tiles(block):
             part = difference[rows, columns]
             known = part[np.isfinite(part)]
             row, column = block.row + rows.start, block.column + columns.start
