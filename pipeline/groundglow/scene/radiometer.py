@@ -124,6 +124,8 @@ class Sensor:
         Correlation of the bands' calibration errors within one scene.
     bands : mapping of str to SensorBand
         By band number, in the file's order.
+    flight_height : float or None
+        Usual height above the ground; turns angles off nadir into zenith angles. [m]
     reflective : mapping of str to str
         Band numbers of "red" and "near_infrared", where the sensor has them.
     quality_layouts : mapping of str to tuple of QualityRule
@@ -136,6 +138,7 @@ class Sensor:
     native_footprint: float | None
     calibration_correlation: float
     bands: Mapping[str, SensorBand]
+    flight_height: float | None
     reflective: Mapping[str, str]
     quality_layouts: Mapping[str, tuple[QualityRule, ...]]
 

@@ -127,6 +127,9 @@ class SensorDocument(Document):
     native_footprint: Positive | None = Field(
         None, description="Size of the sensor's own pixel on the ground. [m]"
     )
+    flight_height: Positive | None = Field(
+        None, description="Usual height above the ground; turns angles off nadir into zenith angles. [m]"
+    )
     calibration_correlation: float = Field(
         0.0, ge=-1.0, le=1.0, description="Correlation between the bands' calibration errors within a scene."
     )
@@ -168,6 +171,7 @@ class SensorDocument(Document):
             native_footprint=self.native_footprint,
             calibration_correlation=self.calibration_correlation,
             bands=bands,
+            flight_height=self.flight_height,
             reflective=self.reflective.model_dump() if self.reflective else {},
             quality_layouts=layouts,
         )
