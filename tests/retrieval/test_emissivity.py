@@ -80,8 +80,13 @@ def test_a_raster_keeps_what_is_possible_and_flags_the_rest() -> None:
     fields = raster_fields(given, 0.02)
     expected = np.array([[0.97, np.nan, np.nan, np.nan], [1.0, np.nan, 0.69, np.nan]], dtype=np.float32)
     np.testing.assert_array_equal(fields.band, expected)
-    for name in ("band_uncertainty", "broadband", "broadband_shared", "broadband_own"):
-        np.testing.assert_array_equal(np.isnan(getattr(fields, name)), np.isnan(expected))
+    np.testing.assert_array_equal(fields.broadband, expected)
+    for values, number in (
+        (fields.band_uncertainty, 0.02),
+        (fields.broadband_shared, 0.02),
+        (fields.broadband_own, 0.03),
+    ):
+        np.testing.assert_array_equal(values, np.full((2, 4), number, np.float32))
     wide = bits("broadband_emissivity_assumed")
     impossible = bits("impossible")
     assert fields.flags.tolist() == [

@@ -131,11 +131,11 @@ def test_all_five_arrays_are_averaged_and_flags_stay_with_their_pixel() -> None:
     found = smooth_fields(sharp, weights, weights)
     inner = (slice(1, -1), slice(1, -1))
     assert found.flags.tolist() == sharp.flags[inner].tolist()
+    known = ~np.isnan(sharp.band)
     for name in EmissivityFields.__dataclass_fields__:
         result, before = getattr(found, name), getattr(sharp, name)
         assert result.shape == (83, 101)
         if name != "flags":
-            known = ~np.isnan(before)
             np.testing.assert_array_equal(result, smooth(before, known, weights, weights))
 
 

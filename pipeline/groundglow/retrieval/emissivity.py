@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from groundglow.errors import DomainError
+from groundglow.kernels import kernel
 from groundglow.physics.spectral_response import SpectralResponse
 from groundglow.quantities import FLAG
 from groundglow.retrieval.chain import EmissivityFields
@@ -29,6 +30,9 @@ IMPOSSIBLE = np.uint16(FLAG["impossible"].mask)
 BARE_METAL = np.uint16(FLAG["bare_metal"].mask)
 ASSUMED = np.uint16(FLAG["emissivity_assumed"].mask)
 BROADBAND_ASSUMED = np.uint16(FLAG["broadband_emissivity_assumed"].mask)
+# As the compiled screening reads them.
+_MISSING, _WRONG, _METAL = NO_DATA, IMPOSSIBLE, BARE_METAL
+_ZERO, _ONE, _METAL_BELOW = np.float32(0.0), np.float32(1.0), np.float32(LEAST_EMISSIVITY)
 _CLASS_FLAGS = {"water": FLAG["water"].mask, "snow_ice": FLAG["snow"].mask}
 
 
@@ -203,23 +207,37 @@ def raster_fields(
     Returns
     -------
     EmissivityFields
+        NaN in ``band`` decides; arrays that are one number everywhere may keep it there.
     """
-    given = np.asarray(emissivity, dtype=np.float32)
-    known = ~np.isnan(given)
-    possible = (given > 0.0) & (given <= 1.0)
-    flags = np.where(known, np.uint16(0), NO_DATA)
-    flags |= np.where(known & ~possible, IMPOSSIBLE, np.uint16(0))
-    flags |= np.where(possible & (given < np.float32(LEAST_EMISSIVITY)), BARE_METAL, np.uint16(0))
-    band = np.where(possible, given, np.float32(np.nan))
-    spread = np.where(possible, np.asarray(uncertainty, dtype=np.float32), np.float32(np.nan))
-    wide = np.full(band.shape, np.nan, np.float32) if broadband is None else np.asarray(broadband, np.float32)
-    stated = possible & (wide > 0.0) & (wide <= 1.0)
-    flags |= np.where(possible & ~stated, BROADBAND_ASSUMED, np.uint16(0))
+    given = np.ascontiguousarray(emissivity, dtype=np.float32)
+    band = np.empty_like(given)
+    flags = np.empty(given.shape, dtype=np.uint16)
+    _screen(given, BROADBAND_ASSUMED if broadband is None else np.uint16(0), band, flags)
+    spread = np.broadcast_to(np.asarray(uncertainty, dtype=np.float32), given.shape)
+    own = np.broadcast_to(np.float32(broadband_uncertainty), given.shape)
+    if broadband is None:
+        return EmissivityFields(band, spread, band, spread, own, flags)
+    wide = np.asarray(broadband, dtype=np.float32)
+    stated = ~np.isnan(band) & (wide > 0.0) & (wide <= 1.0)
     return EmissivityFields(
         band=band,
         band_uncertainty=spread,
         broadband=np.where(stated, wide, band),
         broadband_shared=np.where(stated, np.float32(0.0), spread),
-        broadband_own=np.where(possible, np.float32(broadband_uncertainty), np.float32(np.nan)),
-        flags=flags,
+        broadband_own=own,
+        flags=np.where(stated | np.isnan(band), flags, flags | BROADBAND_ASSUMED),
     )
+
+
+@kernel("void(float32[:, ::1], uint16, float32[:, ::1], uint16[:, ::1])")
+def _screen(given: Pixels, usual: int, band: Pixels, flags: Flags) -> None:
+    """Keep what an emissivity can be, with the usual flag; flag metal, the impossible and the missing."""
+    for i in range(given.shape[0]):
+        for j in range(given.shape[1]):
+            value = given[i, j]
+            if value > _ZERO and value <= _ONE:
+                band[i, j] = value
+                flags[i, j] = usual | _METAL if value < _METAL_BELOW else usual
+            else:
+                band[i, j] = np.float32(np.nan)
+                flags[i, j] = _MISSING if np.isnan(value) else _WRONG

@@ -65,8 +65,8 @@ class Relation:
 
 
 # Coefficients from memory of the papers. Their own uncertainty is a planning value: the papers report
-# residuals of 0.005 to 0.02 for soils and rocks, the larger ones below 0.9, and their target is 8-13.5 um, from
-# which the whole spectrum differs by about 0.01 to 0.02 over sand.
+# residuals of 0.005 to 0.02 for soils and rocks, the larger ones below 0.9, and their target is 8-13.5 um,
+# from which the whole spectrum differs by about 0.01 to 0.02 over sand.
 RELATIONS: Mapping[str, Relation] = MappingProxyType(
     {
         "aster-2003": Relation(

@@ -98,40 +98,53 @@ def smooth(values: Pixels, known: Known, rows: Float, columns: Float) -> Pixels:
     across, down = columns.size // 2, rows.size // 2
     height, width = values.shape[0] - 2 * down, values.shape[1] - 2 * across
     filled = np.where(known, values, np.float32(0.0)).astype(np.float64)
-    total = np.zeros((values.shape[0], width))
-    weight = np.zeros((values.shape[0], width))
-    for k, share in enumerate(columns):
-        total += share * filled[:, k : k + width]
-        weight += share * known[:, k : k + width]
-    whole, whole_weight = np.zeros((height, width)), np.zeros((height, width))
-    for k, share in enumerate(rows):
-        whole += share * total[k : k + height]
-        whole_weight += share * weight[k : k + height]
+    counted = known.astype(np.float64)
+
+    def along(array: Float, weights: Float, size: int) -> Float:
+        """Sum over the last axis: the middle, then pair by pair outwards."""
+        middle = weights.size // 2
+        total = weights[middle] * array[:, middle : middle + size]
+        for step in range(1, middle + 1):
+            left = array[:, middle - step : middle - step + size]
+            right = array[:, middle + step : middle + step + size]
+            total = total + weights[middle + step] * (left + right)
+        return np.asarray(total)
+
+    total, weight = (along(along(array, columns, width).T, rows, height).T for array in (filled, counted))
     here = known[down : down + height, across : across + width]
-    return np.where(here, whole / np.where(here, whole_weight, 1.0), np.nan).astype(np.float32)
+    return np.where(here, total / np.where(here, weight, 1.0), np.nan).astype(np.float32)
 
 
 @kernel("void(float64[:, ::1], float64[::1], float64[::1], float64[:, ::1], float64[:, ::1])")
 def _sum_over_footprint(values: Float, rows: Float, columns: Float, total: Float, result: Float) -> None:
     """Weighted sums along the rows, into ``total``, then down the columns: same order as the statement."""
-    width = total.shape[1]
-    total[:] = 0.0
-    result[:] = 0.0
+    width = result.shape[1]
+    across, down = columns.size // 2, rows.size // 2
     # Slices, so that the innermost loops run over plain vectors.
     for i in range(values.shape[0]):
         sums = total[i]
-        for k in range(columns.size):
-            share = columns[k]
-            shifted = values[i, k : k + width]
+        share = columns[across]
+        middle = values[i, across : across + width]
+        for j in range(width):
+            sums[j] = share * middle[j]
+        for step in range(1, across + 1):
+            share = columns[across + step]
+            left = values[i, across - step : across - step + width]
+            right = values[i, across + step : across + step + width]
             for j in range(width):
-                sums[j] += share * shifted[j]
+                sums[j] += share * (left[j] + right[j])
     for i in range(result.shape[0]):
         sums = result[i]
-        for k in range(rows.size):
-            share = rows[k]
-            below = total[i + k]
+        share = rows[down]
+        middle = total[i + down]
+        for j in range(width):
+            sums[j] = share * middle[j]
+        for step in range(1, down + 1):
+            share = rows[down + step]
+            above = total[i + down - step]
+            below = total[i + down + step]
             for j in range(width):
-                sums[j] += share * below[j]
+                sums[j] += share * (above[j] + below[j])
 
 
 @kernel("void(float32[:, ::1], boolean[:, ::1], float64[:, ::1])")
@@ -175,6 +188,13 @@ def smooth_stack(stack: Sequence[Pixels], rows: Float, columns: Float) -> list[P
     _sum_over_footprint(filled, rows, columns, along, weight)
     results = []
     for values in stack:
+        if values.strides == (0, 0):
+            # One number everywhere stays that number.
+            constant = np.where(
+                known[down : down + shape[0], across : across + shape[1]], values[0, 0], np.nan
+            )
+            results.append(constant.astype(np.float32))
+            continue
         _fill(np.ascontiguousarray(values), known, filled)
         _sum_over_footprint(filled, rows, columns, along, total)
         result = np.empty(shape, dtype=np.float32)
