@@ -10,14 +10,15 @@ from __future__ import annotations
 
 import logging
 from collections.abc import Callable
-from functools import cache
-from typing import TypeVar
+from functools import cache, partial
+from typing import TypeVar, cast
 
 import numba
 
 log = logging.getLogger(__name__)
 
 Function = TypeVar("Function", bound=Callable[..., object])
+
 
 def kernel(*signatures: str, inline: bool = False) -> Callable[[Function], Function]:
     """Compile a function for the given Numba signatures, without the interpreter lock.
@@ -36,19 +37,17 @@ def kernel(*signatures: str, inline: bool = False) -> Callable[[Function], Funct
     decorator
         Gives back a function with the same call signature.
     """
-    options: dict[str, object] = {"nogil": True, "error_model": "numpy"}
-    if inline:
-        options["forceinline"] = True
 
     def compile_it(function: Function) -> Function:
         chosen = list(signatures) or None
+        compiled = partial(numba.njit, chosen, nogil=True, error_model="numpy", forceinline=inline)
         try:
-            return numba.njit(chosen, cache=True, **options)(function)  # type: ignore[no-any-return]
+            return cast("Function", compiled(cache=True)(function))
         except (RuntimeError, OSError) as error:
             if isinstance(error, RuntimeError) and "cannot cache" not in str(error):
                 raise
             _tell_once(str(error))
-            return numba.njit(chosen, **options)(function)  # type: ignore[no-any-return]
+            return cast("Function", compiled()(function))
 
     return compile_it
 

@@ -10,7 +10,9 @@ from groundglow.kernels import kernel
 Mask = NDArray[np.bool_]
 
 
-def near_cloud(cloud: Mask, halo: tuple[int, int, int, int], pixel: tuple[float, float], buffer: float) -> Mask:
+def near_cloud(
+    cloud: Mask, halo: tuple[int, int, int, int], pixel: tuple[float, float], buffer: float
+) -> Mask:
     """Which pixels lie within a buffer around clouds, centre to centre.
 
     Parameters
@@ -40,9 +42,7 @@ def near_cloud(cloud: Mask, halo: tuple[int, int, int, int], pixel: tuple[float,
 
 
 @kernel("void(boolean[:, ::1], int64, int64, float64, float64, float64, boolean[:, ::1])")
-def _near(
-    cloud: Mask, top: int, left: int, height: float, width: float, buffer: float, result: Mask
-) -> None:
+def _near(cloud: Mask, top: int, left: int, height: float, width: float, buffer: float, result: Mask) -> None:
     """Distance along the row first, then the nearest over the rows within reach."""
     rows, columns = cloud.shape
     far = float(rows + columns + 2) * max(height, width) + 2.0 * buffer

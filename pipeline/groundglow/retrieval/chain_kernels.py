@@ -44,9 +44,9 @@ def temperature_of_radiance(
     start: Pixels,
     temperature: Pixels,
     slope: Pixels,
-    first_key: int,
-    lowest: float,
-    highest: float,
+    first_key: np.int32,
+    lowest: np.float32,
+    highest: np.float32,
     result: Pixels,
 ) -> None:
     """Band radiance to temperature through a band table; NaN outside it.
@@ -66,7 +66,12 @@ def temperature_of_radiance(
 
 @kernel("void(float32[:, ::1], float32[:, ::1], float32, float32, float32, uint16[:, ::1])")
 def flag_radiance(
-    radiance: Pixels, brightness: Pixels, lowest: float, highest: float, saturation: float, flags: Flags
+    radiance: Pixels,
+    brightness: Pixels,
+    lowest: np.float32,
+    highest: np.float32,
+    saturation: np.float32,
+    flags: Flags,
 ) -> None:
     """Flag pixels without radiance, outside the calibrated range or at the sensor's saturation.
 
@@ -84,13 +89,13 @@ def flag_radiance(
 
 
 @kernel(inline=True)
-def _transmittance_at(air: Pixels, i: int, j: int, temperature: float, nodes: Pixels) -> tuple[float, float]:
+def _transmittance_at(
+    air: Pixels, i: int, j: int, temperature: np.float32, nodes: Pixels
+) -> tuple[np.float32, np.float32]:
     """Quadratic through three surface temperatures: the transmittance and its slope."""
     x = temperature
-    if x < nodes[0]:
-        x = nodes[0]
-    if x > nodes[2]:
-        x = nodes[2]
+    x = max(x, nodes[0])
+    x = min(x, nodes[2])
     h1 = nodes[1] - nodes[0]
     h2 = nodes[2] - nodes[1]
     d1 = (air[1, i, j] - air[0, i, j]) / h1
@@ -115,9 +120,9 @@ def surface_temperature(
     start: Pixels,
     temperature: Pixels,
     slope: Pixels,
-    first_key: int,
-    lowest: float,
-    highest: float,
+    first_key: np.int32,
+    lowest: np.float32,
+    highest: np.float32,
     result: Pixels,
     blackbody: Pixels,
     response: Pixels,
@@ -181,10 +186,10 @@ def temperature_uncertainty(
     emissivity: Pixels,
     emissivity_uncertainty: Pixels,
     air: Pixels,
-    temperatures: int,
-    causes: int,
+    temperatures: np.int32,
+    causes: np.int32,
     noise: Pixels,
-    calibration: float,
+    calibration: np.float32,
     pixel: Pixels,
     surface_class: Pixels,
     scene: Pixels,
@@ -272,7 +277,7 @@ def surface_fluxes(emitted: Pixels, emissivity: Pixels, sky: Pixels, leaving: Pi
 
 
 @kernel("void(float32[:, ::1], uint16[:, ::1], uint16)")
-def mask_flagged(values: Pixels, flags: Flags, mask: int) -> None:
+def mask_flagged(values: Pixels, flags: Flags, mask: np.uint16) -> None:
     """Set to NaN every value whose flags meet the mask."""
     for i in range(values.shape[0]):
         for j in range(values.shape[1]):

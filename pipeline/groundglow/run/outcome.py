@@ -130,7 +130,7 @@ def _joined(errors: Sequence[ErrorSums]) -> dict[str, KnownError]:
     found = {}
     for layer in dict.fromkeys(part.layer for part in sorted(errors)):
         parts = sorted(part for part in errors if part.layer == layer)
-        count = sum(part.count for part in parts)
+        count = sum(part.pixels for part in parts)
         if count == 0:
             continue
         bias = math.fsum(part.total for part in parts) / count

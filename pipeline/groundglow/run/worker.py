@@ -106,7 +106,7 @@ class ErrorSums(NamedTuple):
     layer: str
     row: int
     column: int
-    count: int
+    pixels: int
     total: float
     total_of_squares: float
 
@@ -286,7 +286,9 @@ def tiles(block: Block) -> Iterator[tuple[slice, slice]]:
             )
 
 
-def reference_errors(work: SceneWork, block: Block, maps: Mapping[str, Pixels], flags: Flags) -> Iterator[ErrorSums]:
+def reference_errors(
+    work: SceneWork, block: Block, maps: Mapping[str, Pixels], flags: Flags
+) -> Iterator[ErrorSums]:
     """Map minus reference over clear pixels, summed a tile."""
     spoiled = (flags & _SPOILED) != 0
     for name, source in work.references.items():
