@@ -230,7 +230,7 @@ def raster_fields(
 
 
 @kernel("void(float32[:, ::1], uint16, float32[:, ::1], uint16[:, ::1])")
-def _screen(given: Pixels, usual: int, band: Pixels, flags: Flags) -> None:
+def _screen(given: Pixels, usual: np.uint16, band: Pixels, flags: Flags) -> None:
     """Keep what an emissivity can be, with the usual flag; flag metal, the impossible and the missing."""
     for i in range(given.shape[0]):
         for j in range(given.shape[1]):
