@@ -289,3 +289,20 @@ def test_constants_in_use_for_aster_are_plancks_law_at_one_wavelength(
 ) -> None:
     assert (FIRST_RADIATION_CONSTANT / k1) ** 0.2 == pytest.approx(wavelength, abs=6e-4)
     assert SECOND_RADIATION_CONSTANT / k2 == pytest.approx(wavelength, abs=6e-4)
+
+
+@pytest.mark.parametrize(
+    ("k1", "k2", "unit_conversion", "radiance", "temperature"),
+    [
+        # Source: ASTER User Handbook v2 (Abrams et al. 2002): L = (DN - 1) UCC, bands 13 and 10, DN 2000
+        # (from memory), with the constants in use above.
+        (866.4686, 1350.069, 0.005693, 11.38031, 310.676),
+        (3040.136, 1735.338, 0.006822, 13.63718, 320.686),
+    ],
+)
+def test_aster_counts_to_temperature(
+    k1: float, k2: float, unit_conversion: float, radiance: float, temperature: float
+) -> None:
+    found = (2000 - 1) * unit_conversion
+    assert found == pytest.approx(radiance, abs=1e-5)
+    assert two_constant_temperature(found, k1, k2) == pytest.approx(temperature, abs=0.01)

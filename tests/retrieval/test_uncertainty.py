@@ -147,6 +147,37 @@ def test_the_covariance_of_flux_with_its_emissivity_is_that_of_draws() -> None:
     assert apart > 3.0 * stated.total
 
 
+spreads = st.floats(0.0, 0.3)
+
+
+@bounded
+@given(spreads, spreads, st.floats(0.0, 0.05), st.lists(st.tuples(spreads, spreads, spreads), max_size=4))
+def test_groups_add_as_squares_and_more_doubt_never_means_less(
+    noise: float, calibration: float, emissivity: float, air: list[tuple[float, float, float]]
+) -> None:
+    changes = [change(transmittance=0.1 * t, path=p, sky=s) for t, p, s in air]
+    parts = propagate(worked(), EMISSIVITY, AIR, Causes(noise, calibration, emissivity, changes))
+    squares = parts.pixel**2 + parts.surface_class**2 + parts.scene**2
+    assert parts.total**2 == pytest.approx(float(squares), rel=1e-12, abs=1e-15)
+    more = Causes(noise + 0.01, calibration + 0.01, emissivity + 0.001, [*changes, change(path=0.01)])
+    worse = propagate(worked(), EMISSIVITY, AIR, more)
+    assert worse.pixel > parts.pixel
+    assert abs(worse.surface_class) > abs(parts.surface_class)
+    assert worse.scene > parts.scene
+
+
+@bounded
+@given(spreads, spreads, spreads)
+def test_a_cause_cut_into_two_independent_halves_weighs_the_same(t: float, path: float, sky: float) -> None:
+    share = np.sqrt(0.5)
+    whole = change(transmittance=0.1 * t, path=path, sky=sky)
+    half = change(transmittance=0.1 * t * share, path=path * share, sky=sky * share)
+    one, two = (
+        propagate(worked(), EMISSIVITY, AIR, Causes(0.0, 0.0, 0.0, air)) for air in ([whole], [half, half])
+    )
+    assert one.scene == pytest.approx(float(two.scene), rel=1e-9, abs=1e-12)
+
+
 @bounded
 @given(st.floats(1.0, 500.0), st.floats(10.0, 120.0), st.floats(10.0, 2000.0))
 def test_footprints_never_count_more_than_pixels_nor_less_than_one(
