@@ -144,22 +144,25 @@ def _from_odl(text: str, where: str) -> dict[str, dict[str, str]]:
     """Groups of the text form."""
     groups: dict[str, dict[str, str]] = {}
     open_groups: list[str] = []
-    ended = False
-    for number, line in enumerate(text.splitlines(), start=1):
-        entry = line.strip().strip("\x00")
+    entries = [line.strip().strip("\x00") for line in text.splitlines()]
+    ended = "END" in entries
+    if ended:
+        entries = entries[: entries.index("END")]
+    for number, entry in enumerate(entries, start=1):
         if not entry:
             continue
-        if entry == "END":
-            ended = True
-            break
         key, equals, value = (part.strip() for part in entry.partition("="))
         if not equals:
+            if number == len(entries) > 1 and not ended:
+                break
             raise InputError(f"line {number} is not of the form KEY = value: {entry[:60]!r}", where=where)
         if key == "GROUP":
             open_groups.append(value)
             groups.setdefault(value, {})
         elif key == "END_GROUP":
             if not open_groups or open_groups.pop() != value:
+                if number == len(entries) and not ended:
+                    break
                 raise InputError(f"line {number} ends a group {value!r} that is not open", where=where)
         elif not open_groups:
             raise InputError(f"line {number}: {key!r} stands outside any group", where=where)

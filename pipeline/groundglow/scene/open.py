@@ -80,10 +80,10 @@ def _from_json(file: Path, sensor: str | None) -> Scene:
 
 def _from_files(files: SceneFiles, sensor: str | None) -> Scene:
     """A folder or archive: the one description in it."""
-    metadata = sorted(name for name in files.names.values() if is_level1_name(name))
-    products = {str(PurePosixPath(name).with_suffix("")).lower(): name for name in reversed(metadata)}
-    # Of the two forms of the same metadata the text form stands for both.
-    products.update({key: name for key, name in products.items() if name.lower().endswith(".txt")})
+    metadata = [name for name in files.names.values() if is_level1_name(name)]
+    # Of two forms of the same metadata the text form, which comes last, stands for both.
+    metadata.sort(key=lambda name: (name.lower().endswith(".txt"), name))
+    products = {str(PurePosixPath(name).with_suffix("")).lower(): name for name in metadata}
     if len(products) == 1:
         return read_level1(files, next(iter(products.values())))
     if len(products) > 1:
