@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -14,19 +13,17 @@ from groundglow.errors import ConfigError
 from groundglow.layers.layer_format import LayerFormat, format_of
 from groundglow.quantities import FLAG
 from groundglow.raster.band import RasterSource
-from groundglow.raster.grid import Block, Grid
+from groundglow.raster.grid import Block
 from groundglow.raster.open import describe_raster
 from groundglow.run.air_source import Air, air_of_job
 from groundglow.run.config import Job
-from groundglow.run.config_emissivity import ConstantEmissivity
-from groundglow.run.emissivity_source import ConstantSource, EmissivitySource, RasterSourceOfEmissivity
+from groundglow.run.emissivity_choice import emissivity_of_job
+from groundglow.run.ground_size import pixel_in_metres
 from groundglow.run.input_checks import check_inputs
 from groundglow.run.radiometry import chain_settings, radiance_conversion
 from groundglow.run.worker import SceneWork
 from groundglow.scene.model import Scene, ThermalBand
 
-_RASTER_UNCERTAINTY = 0.02
-_METRES_A_DEGREE = 111_320.0
 # Bytes a pixel of one block in flight: inputs, air fields, tiles and encoded layers.
 _BYTES_FIXED = 60
 _BYTES_A_LAYER = 10
@@ -122,7 +119,7 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
     step = _quantisation_step(band, info.dtypes[band.source.band - 1], info.scales[band.source.band - 1])
     causes = len(air.grid.causes) if air is not None else 0
     settings, account = chain_settings(band, job.temperature, weighting, causes, step)
-    emissivity = _emissivity(job, scene, band) if air is not None else None
+    emissivity = emissivity_of_job(job.emissivity, scene, band, grid, folder) if air is not None else None
     work = SceneWork(
         grid=grid,
         thermal=band.source,
@@ -179,24 +176,6 @@ def _quantisation_step(band: ThermalBand, dtype: str, file_scale: float) -> floa
     return abs(scale) * float(band.sensor_band.response.band_radiance_slope(300.0))
 
 
-def _emissivity(job: Job, scene: Scene, band: ThermalBand) -> EmissivitySource:
-    chosen = job.emissivity
-    if isinstance(chosen, ConstantEmissivity):
-        return ConstantSource(
-            chosen.value, chosen.uncertainty, chosen.broadband, chosen.broadband_uncertainty
-        )
-    raster = scene.emissivity.get(band.number)
-    if raster is None:
-        raise ConfigError(
-            f"the scene {scene.name} names no emissivity raster for band {band.number}",
-            where="emissivity.source",
-            remedy="Add an [[emissivity]] table to the scene file, or choose another emissivity source",
-        )
-    stated = chosen.uncertainty if chosen.uncertainty is not None else raster.uncertainty
-    uncertainty = _RASTER_UNCERTAINTY if stated is None else stated
-    return RasterSourceOfEmissivity(raster.source, uncertainty, chosen.broadband_uncertainty)
-
-
 def _elevation(scene: Scene, air: Air | None) -> RasterSource | float:
     if scene.elevation is not None:
         return scene.elevation
@@ -220,14 +199,3 @@ def _references(job: Job, folder: Path) -> dict[str, RasterSource]:
         describe_raster(source.path)
         found[name] = source
     return found
-
-
-def pixel_in_metres(grid: Grid) -> tuple[float, float]:
-    """Height and width of a grid's pixel on the ground, at its centre. [m]"""
-    a, b, _, d, e, f = tuple(grid.transform)[:6]
-    across, down = math.hypot(a, d), math.hypot(b, e)
-    if not grid.crs.is_geographic:
-        factor = float(grid.crs.linear_units_factor[1])
-        return down * factor, across * factor
-    latitude = f + 0.5 * (d * grid.width + e * grid.height)
-    return down * _METRES_A_DEGREE, across * _METRES_A_DEGREE * math.cos(math.radians(latitude))
