@@ -122,6 +122,21 @@ def test_class_codes_become_their_values_and_flags() -> None:
     assert total[1, 0] == pytest.approx(np.hypot(0.0087, 0.00905), abs=1e-4)
 
 
+@pytest.mark.parametrize("dtype", [np.uint8, np.int16, np.int32, np.int64])
+@pytest.mark.parametrize("other", [2, 120, 70_001])
+def test_codes_of_any_kind_and_range_find_their_class(dtype: type, other: int) -> None:
+    if other > np.iinfo(dtype).max:
+        other = int(np.iinfo(dtype).max)
+    table = shipped_class_table()
+    lookup = class_lookup(table.by_code({1: "water", other: "asphalt"}), BAND)
+    codes = np.array([[1, other, 1], [other, other, 1]], dtype=dtype)
+    found = class_fields(codes, lookup)
+    assert found.band == pytest.approx(np.where(codes == 1, 0.989, 0.96), abs=1e-6)
+    for stranger in (0, other - 1 if other > 2 else 3, np.iinfo(dtype).min if other > 3 else 99):
+        with pytest.raises(InputError, match="without a class"):
+            class_fields(np.array([[1, stranger]], dtype=dtype), lookup)
+
+
 def test_no_data_in_a_class_raster_is_no_data() -> None:
     lookup = class_lookup(shipped_class_table().by_code(), BAND)
     fields = class_fields(np.array([[1, 0]]), lookup, known=np.array([[True, False]]))

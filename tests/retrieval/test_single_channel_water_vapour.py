@@ -136,6 +136,9 @@ def test_the_compiled_form_equals_the_statement(name: str) -> None:
         return values
 
     radiance, emissivity, water = mixed(-0.5, 14.0), mixed(-0.1, 1.1), mixed(-2.0, 34.0)
+    # The ends of every range exactly.
+    radiance[:6, 0], emissivity[:6, 0] = 9.0, (1.0, 1.0, 0.97, 0.97, 0.97, 0.0)
+    water[:6, 0] = (0.0, 5.0, 20.0, 30.0, 10.0, 10.0)
     bright = two_constant_temperature(radiance, K1, K2).astype(np.float32)
     outputs = [np.zeros(shape, np.float32) for _ in range(4)]
     flags = np.full(shape, FLAG["water"].mask, np.uint16)

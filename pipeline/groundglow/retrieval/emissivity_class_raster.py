@@ -17,6 +17,9 @@ from groundglow.retrieval.emissivity_class import SurfaceClass
 Pixels = NDArray[np.float32]
 Flags = NDArray[np.uint16]
 
+# Widest range of codes for which a dense table is made.
+_DENSE = 65_536
+
 
 @dataclass(frozen=True, eq=False)
 class ClassLookup:
@@ -89,15 +92,29 @@ def class_fields(
     InputError
         If a code is not in the table; the message lists those that are not.
     """
-    valid = np.ones(codes.shape, dtype=np.bool_) if known is None else known
-    place = np.minimum(np.searchsorted(lookup.codes, codes), lookup.codes.size - 1)
-    strangers = valid & (lookup.codes[place] != codes)
+    place = _places(codes, lookup.codes)
+    strangers = place < 0 if known is None else known & (place < 0)
     if strangers.any():
         raise unknown_codes_error(codes[strangers], lookup.codes, "the class raster")
+    if known is None:
+        band, spread, wide, shared, own = (numbers[place] for numbers in lookup.numbers)
+        return EmissivityFields(band, spread, wide, shared, own, lookup.flags[place])
     band, spread, wide, shared, own = (
-        np.where(valid, numbers[place], np.float32(np.nan)) for numbers in lookup.numbers
+        np.where(known, numbers[place], np.float32(np.nan)) for numbers in lookup.numbers
     )
-    return EmissivityFields(band, spread, wide, shared, own, np.where(valid, lookup.flags[place], NO_DATA))
+    return EmissivityFields(band, spread, wide, shared, own, np.where(known, lookup.flags[place], NO_DATA))
+
+
+def _places(codes: NDArray[np.integer], table: NDArray[np.int64]) -> NDArray[np.intp]:
+    """Place of each code in the table, -1 where it has none."""
+    first, span = int(table[0]), int(table[-1]) - int(table[0]) + 1
+    if span > _DENSE or codes.dtype.itemsize > 4:
+        place = np.minimum(np.searchsorted(table, codes), table.size - 1)
+        return np.where(table[place] == codes, place, -1)
+    # One look-up in a dense table, whose ends stand for everything beyond it.
+    dense = np.full(span + 2, -1, dtype=np.intp)
+    dense[table - first + 1] = np.arange(table.size)
+    return dense[np.clip(codes.astype(np.int64) - (first - 1), 0, span + 1)]
 
 
 def unknown_codes_error(found: NDArray[np.integer], codes: NDArray[np.int64], where: str) -> InputError:

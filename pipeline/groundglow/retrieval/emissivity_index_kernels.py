@@ -66,6 +66,23 @@ def _index(red: float, near_infrared: float) -> float:
     return index
 
 
+@kernel(inline=True)
+def _special_place(index: float, given: int, bits: Flags, i: int, j: int) -> int:
+    """Where the packed numbers of water, snow, or ground without a usable index begin; 0 on plain land."""
+    place = 0
+    if given & _SNOW:
+        place = _T_SNOW
+    elif given & _WATER:
+        place = _T_WATER
+    elif np.isnan(index):
+        place = _T_UNKNOWN
+        bits[i, j] = _ASSUMED
+    elif index < 0.0:
+        place = _T_NEGATIVE
+        bits[i, j] = _ASSUMED
+    return place
+
+
 @kernel(_SIGNATURE)
 def threshold_tile(
     red: Pixels, near_infrared: Pixels, flags: Flags, packed: Float, result: Pixels, bits: Flags
@@ -76,34 +93,21 @@ def threshold_tile(
     u_plant, wide_plant, shared_plant, own_plant = packed[_PLANT + 1 : _PLANT + 5]
     soil_variance = shared_soil * shared_soil + own_soil * own_soil
     plant_variance = shared_plant * shared_plant + own_plant * own_plant
+    index = np.empty(red.shape[1], dtype=np.float64)
     for i in range(red.shape[0]):
+        # Everywhere as if it were land, without a branch, so that the loop runs in vectors.
         for j in range(red.shape[1]):
             r = np.float64(red[i, j])
-            index = _index(r, np.float64(near_infrared[i, j]))
-            given = flags[i, j]
-            place = 0
-            bits[i, j] = _NOTHING
-            if given & _SNOW:
-                place = _T_SNOW
-            elif given & _WATER:
-                place = _T_WATER
-            elif np.isnan(index):
-                place = _T_UNKNOWN
-                bits[i, j] = _ASSUMED
-            elif index < 0.0:
-                place = _T_NEGATIVE
-                bits[i, j] = _ASSUMED
-            if place != 0:
-                for k in range(5):
-                    result[k, i, j] = np.float32(packed[place + k])
-                continue
-            cover = min(max((index - _BARE_BELOW) / (_FULL_ABOVE - _BARE_BELOW), 0.0), 1.0)
+            n = np.float64(near_infrared[i, j])
+            total = n + r
+            ratio = (n - r) / (total if total > 0.0 else np.nan)
+            found = min(max(ratio, -1.0), 1.0)
+            index[j] = found
+            cover = min(max((found - _BARE_BELOW) / (_FULL_ABOVE - _BARE_BELOW), 0.0), 1.0)
             cover = cover * cover
-            s = soil
-            cavity = cavity_factor
-            if index < _BARE_BELOW:
-                s = min(max(bare + bare_per_red * r, 0.5), 1.0)
-                cavity = 0.0
+            is_bare = found < _BARE_BELOW
+            s = min(max(bare + bare_per_red * r, 0.5), 1.0) if is_bare else soil
+            cavity = 0.0 if is_bare else cavity_factor
             hollow = (1.0 - s) * (1.0 - cover) * cavity
             value = plant * cover + s * (1.0 - cover) + hollow * plant
             e_soil = (1.0 - cover) * (1.0 - cavity * plant) * u_soil
@@ -121,14 +125,18 @@ def threshold_tile(
                 + (by_plant * by_plant) * plant_variance
                 + w_cover * w_cover
             )
-            shared = 0.0
-            if spread > 0.0:
-                shared = together / spread
+            shared = together / (spread if spread > 0.0 else np.inf)
             result[0, i, j] = np.float32(min(value, 1.0))
             result[1, i, j] = np.float32(spread)
             result[2, i, j] = np.float32(min(wide, 1.0))
             result[3, i, j] = np.float32(shared)
             result[4, i, j] = np.float32(np.sqrt(max(variance - shared * shared, 0.0)))
+            bits[i, j] = _NOTHING
+        for j in range(red.shape[1]):
+            place = _special_place(index[j], flags[i, j], bits, i, j)
+            if place != 0:
+                for k in range(5):
+                    result[k, i, j] = np.float32(packed[place + k])
 
 
 @kernel(_SIGNATURE)
