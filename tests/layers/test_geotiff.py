@@ -5,6 +5,7 @@ from __future__ import annotations
 import functools
 import hashlib
 import math
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
@@ -24,6 +25,7 @@ from groundglow.quantities import FLAGS
 from groundglow.raster.grid import Grid
 from layers.cog_rules import broken_rules, decoded_tiles
 from layers.layer_cases import (
+    cut,
     grid_of,
     majority_overview,
     mean_overview,
@@ -262,3 +264,25 @@ def test_missing_blocks_are_named_and_nothing_is_written(tmp_path: Path) -> None
     with pytest.raises(DomainError, match="1 of 9 tiles are missing"):
         write_layer(tmp_path / "layer.tif", temperature(1200, 1200), blocks=blocks)
     assert list(tmp_path.iterdir()) == []
+
+
+def test_layers_finish_side_by_side(tmp_path: Path) -> None:
+    """Encoding in many threads and finishing several layers at once changes no byte."""
+    pixels = temperature(1300, 1700)
+    grid, layer_format = grid_of(*pixels.shape), format_of("surface_temperature")
+    expected = write_layer(tmp_path / "alone.tif", pixels).sha256
+    with ThreadPoolExecutor(4) as pool:
+        encoded = list(
+            pool.map(
+                lambda block: encode_block(cut(pixels, block), block, grid, layer_format), grid.blocks(512)
+            )
+        )
+        writers = [
+            LayerWriter(tmp_path / f"{number}.tif", grid, layer_format, text_of("surface_temperature"))
+            for number in range(4)
+        ]
+        for writer in writers:
+            for one in reversed(encoded):
+                writer.add(one)
+        found = {summary.sha256 for summary in pool.map(LayerWriter.finish, writers)}
+    assert found == {expected}

@@ -137,7 +137,7 @@ class LayerWriter:
             self._places[tile.level, tile.row, tile.column] = (self._end, len(tile.data))
             self._end += len(tile.data)
         with output_errors(self.path):
-            self._spool.write(b"".join(tile.data for tile in tiles))
+            self._spool.writelines(tile.data for tile in tiles)
 
     def finish(self) -> LayerSummary:
         """Write the file under its own name.
