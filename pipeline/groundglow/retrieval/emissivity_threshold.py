@@ -214,6 +214,27 @@ def threshold_method(
     )
 
 
+@dataclass(frozen=True)
+class _Mixture:
+    """Emissivity of soil and vegetation in one pixel, and its derivatives with each and with the cover."""
+
+    value: Float
+    by_soil: Float
+    by_plant: Float
+    by_cover: Float
+
+
+def _mixture(soil: ArrayLike, plant: float, cover: Float, cavity: Float) -> _Mixture:
+    low = np.asarray(soil, dtype=np.float64)
+    hollow = (1.0 - low) * (1.0 - cover) * cavity
+    return _Mixture(
+        value=plant * cover + low * (1.0 - cover) + hollow * plant,
+        by_soil=(1.0 - cover) * (1.0 - cavity * plant),
+        by_plant=cover + hollow,
+        by_cover=plant - low - (1.0 - low) * cavity * plant,
+    )
+
+
 def threshold_emissivity(
     red: ArrayLike, near_infrared: ArrayLike, flags: ArrayLike, method: ThresholdMethod
 ) -> EmissivityFields:
@@ -246,42 +267,31 @@ def threshold_emissivity(
     index = vegetation_index(red, near_infrared)
     cover = vegetation_cover(index)
     b, soil, plant = method.band, method.soil, method.vegetation
-    bare_ground = np.clip(b.bare + b.bare_per_red * np.asarray(red, dtype=np.float64), 0.5, 1.0)
     is_bare = index < BARE_BELOW
+    bare_ground = np.clip(b.bare + b.bare_per_red * np.asarray(red, dtype=np.float64), 0.5, 1.0)
     cavity = np.where(is_bare, 0.0, b.cavity)
-    s = np.where(is_bare, bare_ground, b.soil)
+    band = _mixture(np.where(is_bare, bare_ground, b.soil), b.vegetation, cover, cavity)
+    wide = _mixture(soil.broadband, plant.broadband, cover, cavity)
 
-    def mixed(low: ArrayLike, high: float) -> tuple[Float, Float, Float, Float]:
-        """The mixture and its derivatives with soil, vegetation and cover."""
-        lower = np.asarray(low, dtype=np.float64)
-        hollow = (1.0 - lower) * (1.0 - cover) * cavity
-        value = high * cover + lower * (1.0 - cover) + hollow * high
-        by_soil = (1.0 - cover) * (1.0 - cavity * high)
-        by_plant = cover + hollow
-        return value, by_soil, by_plant, high - lower - (1.0 - lower) * cavity * high
-
-    value, by_soil, by_plant, by_cover = mixed(s, b.vegetation)
-    soil_error = by_soil * soil.band_uncertainty
-    plant_error = by_plant * plant.band_uncertainty
-    cover_error = by_cover * method.cover_uncertainty
-    variance = soil_error**2 + plant_error**2 + cover_error**2
-    spread = np.sqrt(variance)
-
-    wide, wide_by_soil, wide_by_plant, wide_by_cover = mixed(soil.broadband, plant.broadband)
-    wide_cover_error = wide_by_cover * method.cover_uncertainty
+    soil_error = band.by_soil * soil.band_uncertainty
+    plant_error = band.by_plant * plant.band_uncertainty
+    cover_error = band.by_cover * method.cover_uncertainty
+    spread = np.sqrt(soil_error**2 + plant_error**2 + cover_error**2)
+    wide_cover_error = wide.by_cover * method.cover_uncertainty
     together = (
-        soil_error * wide_by_soil * soil.broadband_shared
-        + plant_error * wide_by_plant * plant.broadband_shared
+        soil_error * wide.by_soil * soil.broadband_shared
+        + plant_error * wide.by_plant * plant.broadband_shared
         + cover_error * wide_cover_error
     )
     wide_variance = (
-        (wide_by_soil * wide_by_soil) * (soil.broadband_shared**2 + soil.broadband_own**2)
-        + (wide_by_plant * wide_by_plant) * (plant.broadband_shared**2 + plant.broadband_own**2)
+        wide.by_soil**2 * (soil.broadband_shared**2 + soil.broadband_own**2)
+        + wide.by_plant**2 * (plant.broadband_shared**2 + plant.broadband_own**2)
         + wide_cover_error**2
     )
+    # The part of the broadband error that goes with the band's is their covariance over the band's own.
     shared = together / np.where(spread > 0.0, spread, np.inf)
     own = np.sqrt(np.maximum(wide_variance - shared**2, 0.0))
-    computed = [np.minimum(value, 1.0), spread, np.minimum(wide, 1.0), shared, own]
+    computed = [np.minimum(band.value, 1.0), spread, np.minimum(wide.value, 1.0), shared, own]
     negative, unknown = index < 0.0, np.isnan(index)
     places = ((negative, method.negative), (unknown, method.unknown))
     return with_special_ground(
