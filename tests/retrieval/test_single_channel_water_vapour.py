@@ -37,6 +37,15 @@ def solved(radiance: float, emissivity: float, water: float, name: str = "landsa
         # (2003), JGR 108:4688, at 1 g cm-2 (coefficients from memory).
         ("landsat-8", 20.0, (1.23431, -4.33596, 2.48302)),
         ("landsat-5-2003", 10.0, (1.11471, -2.08861, 1.43565)),
+        # Worked by hand from the rows of Jimenez-Munoz et al. (2009), IEEE TGRS 47:339, TIGR61 (from memory).
+        ("landsat-5", 0.0, (1.10188, -0.29887, -0.45476)),
+        ("landsat-5", 10.0, (1.09370, -1.57260, 1.03865)),
+        ("landsat-5", 20.0, (1.26022, -4.23009, 2.45758)),
+        ("landsat-7", 0.0, (1.08565, -0.19379, -0.43199)),
+        ("landsat-7", 10.0, (1.09026, -1.51733, 0.99960)),
+        ("landsat-7", 20.0, (1.24673, -4.06963, 2.37335)),
+        ("landsat-8", 0.0, (1.01523, 0.20324, -0.27514)),
+        ("landsat-5-2003", 0.0, (1.1234, -0.52894, -0.39071)),
     ],
 )
 def test_functions_of_the_atmosphere(name: str, water: float, expected: tuple[float, float, float]) -> None:
