@@ -2,13 +2,34 @@
 
 from __future__ import annotations
 
+from datetime import datetime
 from itertools import pairwise
 from typing import Annotated, Literal
 
 from pydantic import Field, field_validator, model_validator
 
 from groundglow.documents import Document
-from groundglow.run.measures import FluxDensity, Fraction, Metres, Radiance
+from groundglow.run.measures import (
+    FluxDensity,
+    Fraction,
+    Hectopascal,
+    Kelvin,
+    KelvinDifference,
+    Metres,
+    PartsPerMillion,
+    Percent,
+    Radiance,
+    WaterColumn,
+)
+
+ModelName = Literal[
+    "tropical",
+    "midlatitude_summer",
+    "midlatitude_winter",
+    "subarctic_summer",
+    "subarctic_winter",
+    "us_standard",
+]
 
 
 def _listed(value: object) -> object:
@@ -23,12 +44,12 @@ class AirUncertainty(Document):
     sky_radiance: Radiance = Field(0.15, ge=0.0, le=100.0)
     sky_flux: FluxDensity = Field(10.0, ge=0.0, le=200.0)
     transmittance_path_correlation: float | None = Field(
-        None, ge=-1.0, le=1.0, description="default: -0.9, assumed"
+        None, gt=-1.0, lt=1.0, description="default: -0.9, assumed"
     )
     transmittance_sky_correlation: float | None = Field(
-        None, ge=-1.0, le=1.0, description="default: -0.9, assumed"
+        None, gt=-1.0, lt=1.0, description="default: -0.9, assumed"
     )
-    path_sky_correlation: float | None = Field(None, ge=-1.0, le=1.0, description="default: +0.9, assumed")
+    path_sky_correlation: float | None = Field(None, gt=-1.0, lt=1.0, description="default: +0.9, assumed")
 
 
 class BandAir(Document):
@@ -103,6 +124,140 @@ class ExplicitAtmosphere(Document):
         return self.sky_flux is not None
 
 
+class ProfileUncertainty(Document):
+    """1-sigma uncertainties of a profile; each default depends on the source and is recorded."""
+
+    water_vapour: Fraction | None = Field(
+        None, ge=0.0, le=0.8, description="Relative, of all water together."
+    )
+    air_temperature: KelvinDifference | None = Field(
+        None, ge=0.0, le=20.0, description="Of all temperatures below 500 hPa together."
+    )
+
+
+class SolvedAtmosphere(Document):
+    """What all sources have in common that are solved by radiative transfer."""
+
+    absorption: Literal["updated", "lowtran7"] = Field(
+        "updated", description="Absorption set: the updated one, or that of the 1980s (AFGL-TR-88-0177)."
+    )
+    carbon_dioxide: PartsPerMillion | None = Field(
+        None, gt=0.0, le=5000.0, description="Default: recent global mean."
+    )
+    nitrous_oxide: PartsPerMillion | None = Field(
+        None, gt=0.0, le=50.0, description="Default: recent global mean."
+    )
+    methane: PartsPerMillion | None = Field(
+        None, gt=0.0, le=100.0, description="Default: recent global mean."
+    )
+    minor_gases: bool = Field(
+        True,
+        description="CO, SO2, NO2, NH3, HNO3, O2, N2; without them transmittance is up to 0.004 too high.",
+    )
+    sensor_above: Literal["space", "ground", "sea"] = Field(
+        "space", description="What the sensor's height is counted from; 'space' needs none."
+    )
+    sensor_height: Metres | None = Field(None, gt=0.0, le=100_000.0)
+    uncertainty: ProfileUncertainty = Field(default_factory=ProfileUncertainty)
+
+    @model_validator(mode="after")
+    def _sensor(self) -> SolvedAtmosphere:
+        if (self.sensor_above == "space") != (self.sensor_height is None):
+            raise ValueError(
+                "sensor_height belongs with sensor_above = 'ground' or 'sea', and only with them"
+            )
+        return self
+
+    def gives_sky_flux(self) -> bool:
+        """Always: the same solution gives it."""
+        return True
+
+
+class SoundingAtmosphere(SolvedAtmosphere):
+    """A sounding in a CSV file: radiosonde, mast or drone flight."""
+
+    source: Literal["sounding"]
+    path: str = Field(
+        description="CSV with columns such as pressure_hPa, height_m, temperature_degC, dew_point_degC."
+    )
+    columns: dict[str, str] | None = Field(
+        None, description="Header of the file on the left, such a column name on the right."
+    )
+    time: datetime | None = Field(None, description="When it was taken; its age adds to the uncertainty.")
+    distance: Metres = Field(0.0, ge=0.0, le=1.0e6, description="From the scene; adds to the uncertainty.")
+    ground_height: Metres | None = Field(
+        None, ge=-500.0, le=9000.0, description="Of the lowest level, if not given."
+    )
+    ground_pressure: Hectopascal | None = Field(
+        None, ge=300.0, le=1100.0, description="Of the lowest level, for soundings without pressure."
+    )
+    climatology: ModelName | None = Field(
+        None, description="Model atmosphere above the top; default: by latitude and date."
+    )
+
+    @field_validator("time")
+    @classmethod
+    def _aware(cls, value: datetime | None) -> datetime | None:
+        if value is not None and value.tzinfo is None:
+            raise ValueError("the time of a sounding needs its offset from UTC, such as 2026-07-14T12:00:00Z")
+        return value
+
+
+class AnalysisAtmosphere(SolvedAtmosphere):
+    """A gridded analysis on pressure levels (NetCDF, or GRIB with the extra 'grib')."""
+
+    source: Literal["analysis"]
+    paths: Annotated[tuple[str, ...], Field(min_length=1)] = Field(description="One file or several.")
+    climatology: ModelName | None = Field(
+        None, description="Model atmosphere above the top; default: by latitude and date."
+    )
+
+    @field_validator("paths", mode="before")
+    @classmethod
+    def _one_or_many(cls, value: object) -> object:
+        return _listed(value)
+
+
+class ModelAtmosphere(SolvedAtmosphere):
+    """A model atmosphere of AFGL-TR-86-0110, scaled if wanted."""
+
+    source: Literal["model"]
+    name: ModelName | None = Field(None, description="Default: by latitude and date.")
+    column_water_vapour: WaterColumn | None = Field(
+        None, ge=0.05, le=90.0, description="Above the lowest ground of the scene."
+    )
+    air_temperature: Kelvin | None = Field(
+        None, ge=200.0, le=335.0, description="Near the lowest ground of the scene."
+    )
+
+
+class WeatherAtmosphere(SolvedAtmosphere):
+    """Near-surface weather only: a published relation gives the column, a model atmosphere the shape."""
+
+    source: Literal["weather"]
+    air_temperature: Kelvin = Field(ge=200.0, le=335.0, description="At screen height.")
+    relative_humidity: Percent | None = Field(None, gt=0.0, le=105.0, description="This or dew_point.")
+    dew_point: Kelvin | None = Field(None, ge=180.0, le=310.0)
+    pressure: Hectopascal = Field(ge=300.0, le=1100.0, description="At the station.")
+    ground_height: Metres = Field(ge=-500.0, le=9000.0, description="Of the station above sea level.")
+    scaling: Literal["prata", "gueymard"] = Field(
+        "prata", description="Published relation for the water column."
+    )
+    climatology: ModelName | None = Field(
+        None, description="Model atmosphere that gives the shape; default: by latitude and date."
+    )
+
+    @model_validator(mode="after")
+    def _one_humidity(self) -> WeatherAtmosphere:
+        if (self.relative_humidity is None) == (self.dew_point is None):
+            raise ValueError("give either relative_humidity or dew_point")
+        if self.relative_humidity is not None and self.relative_humidity <= 1.0:
+            raise ValueError(
+                f"relative_humidity is in percent: {self.relative_humidity} looks like a fraction"
+            )
+        return self
+
+
 class NoAtmosphere(Document):
     """Brightness temperature only: the air is left as it is."""
 
@@ -113,4 +268,5 @@ class NoAtmosphere(Document):
         return False
 
 
-Atmosphere = Annotated[ExplicitAtmosphere | NoAtmosphere, Field(discriminator="source")]
+Solved = SoundingAtmosphere | AnalysisAtmosphere | ModelAtmosphere | WeatherAtmosphere
+Atmosphere = Annotated[ExplicitAtmosphere | Solved | NoAtmosphere, Field(discriminator="source")]

@@ -16,7 +16,7 @@ from groundglow.raster.band import RasterSource
 from groundglow.raster.grid import Block
 from groundglow.raster.open import describe_raster
 from groundglow.run.air_source import Air, air_of_job
-from groundglow.run.config import Job
+from groundglow.run.config import NEEDS_SKY_FLUX, Job
 from groundglow.run.emissivity_choice import emissivity_of_job
 from groundglow.run.ground_size import pixel_in_metres
 from groundglow.run.input_checks import check_inputs
@@ -114,7 +114,8 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
     info = describe_raster(band.source.path, indirect=band.source.indirect)
     grid = info.grid
     check_inputs([("thermal", band.source)], grid)
-    air = air_of_job(job.atmosphere, band.number)
+    wants_flux = any(name in NEEDS_SKY_FLUX for name in job.layers.write)
+    air = air_of_job(job.atmosphere, scene, band, grid, folder, sky_flux=wants_flux)
     weighting = air.grid.surface_temperature if air is not None else np.array([300.0])
     step = _quantisation_step(band, info.dtypes[band.source.band - 1], info.scales[band.source.band - 1])
     causes = len(air.grid.causes) if air is not None else 0
@@ -125,7 +126,7 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         thermal=band.source,
         convert=radiance_conversion(band, job.temperature.radiometry),
         quality=scene.quality,
-        elevation=_elevation(scene, air),
+        elevation=air.elevation if air is not None else 0.0,
         view_zenith_angle=scene.view_zenith_angle,
         emissivity=emissivity,
         air=pack(air.grid) if air is not None else None,
@@ -174,18 +175,6 @@ def _quantisation_step(band: ThermalBand, dtype: str, file_scale: float) -> floa
     if band.quantity in ("counts", "radiance"):
         return abs(scale)
     return abs(scale) * float(band.sensor_band.response.band_radiance_slope(300.0))
-
-
-def _elevation(scene: Scene, air: Air | None) -> RasterSource | float:
-    if scene.elevation is not None:
-        return scene.elevation
-    if air is not None and air.grid.height.size > 1:
-        raise ConfigError(
-            f"the air is given over ground heights, and the scene {scene.name} names no elevation",
-            where="atmosphere",
-            remedy="Add elevation to the scene file (a raster or a number in m)",
-        )
-    return 0.0
 
 
 def _formats(job: Job) -> dict[str, LayerFormat]:
