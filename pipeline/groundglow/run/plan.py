@@ -11,6 +11,7 @@ import numpy as np
 from groundglow.atmosphere.interpolate import pack
 from groundglow.errors import ConfigError
 from groundglow.layers.layer_format import LayerFormat, format_of
+from groundglow.layers.scale import TemperatureUnit
 from groundglow.quantities import FLAG
 from groundglow.raster.band import RasterSource
 from groundglow.raster.grid import Block
@@ -49,6 +50,10 @@ class ScenePlan:
     air : Air or None
     method : mapping
         What was chosen, for the provenance.
+    temperature_unit : str
+        "celsius" or "kelvin", for labels.
+    preview : bool
+        Whether a picture is drawn.
     """
 
     scene: Scene
@@ -57,6 +62,8 @@ class ScenePlan:
     blocks: tuple[Block, ...]
     air: Air | None
     method: Mapping[str, object]
+    temperature_unit: TemperatureUnit
+    preview: bool
 
     @property
     def name(self) -> str:
@@ -148,7 +155,9 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         method["emissivity"] = emissivity.describe()
     if air is not None:
         method["atmosphere"] = air.account
-    plan = ScenePlan(scene, band, work, tuple(grid.blocks(job.run.block)), air, method)
+    unit: TemperatureUnit = "celsius" if job.layers.celsius else "kelvin"
+    blocks = tuple(grid.blocks(job.run.block))
+    plan = ScenePlan(scene, band, work, blocks, air, method, unit, job.layers.preview)
     check_inputs(plan.inputs(), grid)
     return plan
 
