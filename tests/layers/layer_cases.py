@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Iterable
 from pathlib import Path
 from typing import Any
@@ -28,6 +29,7 @@ def grid_of(height: int, width: int) -> Grid:
     return Grid(CRS.from_epsg(32633), Affine(30.0, 0.0, 512_340.0, 0.0, -30.0, 5_212_350.0), width, height)
 
 
+@functools.cache
 def temperature(height: int = ODD_HEIGHT, width: int = ODD_WIDTH, seed: int = 7) -> NDArray[np.float32]:
     """Kelvin with noise, some single gaps, and a corner without values that covers whole tiles."""
     random = np.random.default_rng(seed)
@@ -35,9 +37,10 @@ def temperature(height: int = ODD_HEIGHT, width: int = ODD_WIDTH, seed: int = 7)
     pixels = 300 + 6 * np.sin(columns / 211)[None, :] + random.normal(0, 0.5, (height, width))
     pixels[random.random((height, width)) < 0.02] = np.nan
     pixels[: height // 2, : width // 3] = np.nan
-    return pixels.astype(np.float32)
+    return _shared(pixels.astype(np.float32))
 
 
+@functools.cache
 def quality(height: int = ODD_HEIGHT, width: int = ODD_WIDTH, seed: int = 8) -> NDArray[np.uint16]:
     """Flags in patches with scattered single pixels."""
     random = np.random.default_rng(seed)
@@ -45,6 +48,12 @@ def quality(height: int = ODD_HEIGHT, width: int = ODD_WIDTH, seed: int = 8) -> 
     pixels = (1 << patches[:height, :width]).astype(np.uint16)
     scattered = random.random((height, width)) < 0.2
     pixels[scattered] = random.integers(0, 65536, int(scattered.sum()))
+    return _shared(pixels)
+
+
+def _shared(pixels: Pixels) -> Pixels:
+    """Pixels that several tests read and none may change."""
+    pixels.flags.writeable = False
     return pixels
 
 

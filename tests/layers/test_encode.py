@@ -63,11 +63,15 @@ def test_views_and_copies_encode_alike() -> None:
     assert whole.tiles == encode_block(cut(pixels, block).copy(), block, grid, layer_format).tiles
 
 
-def test_encoding_leaves_the_pixels_alone() -> None:
-    pixels = temperature(512, 512)
+@pytest.mark.parametrize(("name", "make"), [("surface_temperature", temperature), ("quality", quality)])
+@pytest.mark.parametrize("writeable", [True, False])
+def test_encoding_leaves_the_pixels_alone(name: str, make: Any, writeable: bool) -> None:
+    """Pixels need not even allow to be changed."""
+    pixels = make(512, 512).copy()
     before = pixels.copy()
-    encode_block(pixels, Block(0, 0, 512, 512), grid_of(512, 512), format_of("surface_temperature"))
-    assert np.array_equal(pixels, before, equal_nan=True)
+    pixels.flags.writeable = writeable
+    encode_block(pixels, Block(0, 0, 512, 512), grid_of(512, 512), format_of(name))
+    assert np.array_equal(pixels, before, equal_nan=name != "quality")
 
 
 def test_a_block_holds_every_overview_tile_within_it() -> None:

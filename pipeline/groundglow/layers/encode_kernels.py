@@ -27,7 +27,8 @@ HISTOGRAM_SHIFT = 12
 HISTOGRAM_BINS = 1 << 20
 
 
-@kernel("void(uint32[:, ::1], UniTuple(int64, 2), UniTuple(int64, 2), uint32, uint32[:, ::1])")
+# The pixels may be read-only: blocks that come from elsewhere often are.
+@kernel("void(Array(uint32, 2, 'C', True), UniTuple(int64, 2), UniTuple(int64, 2), uint32, uint32[:, ::1])")
 def round_tile(
     pixels: NDArray[np.uint32],
     corner: tuple[int, int],
