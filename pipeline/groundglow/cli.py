@@ -33,6 +33,10 @@ app = typer.Typer(
 JobFile = Annotated[
     Path, typer.Argument(metavar="JOB", help="Job file (TOML); configs/ holds commented examples.")
 ]
+Output = Annotated[
+    str | None,
+    typer.Option(metavar="FOLDER", help="Write to this folder (or s3:// address) instead of the job's output."),
+]
 Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="No progress and no table; errors still show.")]
 Json = Annotated[bool, typer.Option("--json", help="Print the summary as JSON on standard output.")]
 
@@ -56,38 +60,69 @@ def common(
 @app.command(epilog=EXIT_CODES)
 def run(
     job: JobFile,
-    output: Annotated[
-        Path | None, typer.Option(help="Write here instead of the job's output folder.")
-    ] = None,
+    output: Output = None,
     workers: Annotated[
         int | None, typer.Option(min=1, help="Threads; default: the job's, else all cores.")
     ] = None,
     scheduler: Annotated[
         str, typer.Option(help="'threads', 'processes[:N]', or tcp://host:port of a Dask scheduler.")
     ] = "threads",
+    force: Annotated[bool, typer.Option("--force", help="Make again what is up to date.")] = False,
     quiet: Quiet = False,
     as_json: Json = False,
 ) -> None:
     """Run a job: read its scenes, write the layers, print what came out.
 
     Each scene becomes one folder of cloud-optimised GeoTIFF layers with a STAC Item, written last. A folder
-    appears only when it is complete; a run that is stopped leaves no half-written layer.
+    appears only when it is complete; a run that is stopped leaves no half-written layer. Scenes whose outputs
+    are up to date are skipped, and one that fails does not stop the others. The report and the log of a run
+    are in the folder .groundglow of the output folder.
     """
     from groundglow.run.commands import run_job  # noqa: PLC0415  (help must not wait for the libraries)
 
-    code = run_job(job, output=output, workers=workers, scheduler=scheduler, quiet=quiet, as_json=as_json)
+    code = run_job(
+        job,
+        output=output,
+        workers=workers,
+        scheduler=scheduler,
+        quiet=quiet,
+        as_json=as_json,
+        force=force,
+    )
     raise typer.Exit(code)
 
 
 @app.command(epilog=EXIT_CODES)
-def plan(job: JobFile, as_json: Json = False) -> None:
-    """Show what a run would do: scenes, grids, blocks, layers, estimated memory and disk space.
+def plan(
+    job: JobFile,
+    output: Output = None,
+    detailed: Annotated[
+        int, typer.Option(min=0, help="Open so many of the scenes to be made; count the others.")
+    ] = 100,
+    as_json: Json = False,
+) -> None:
+    """Show what a run would do and why: scenes, grids, layers, estimated time, memory and disk space.
 
-    Reads headers only and writes nothing.
+    Reads descriptions and headers only, and writes nothing.
     """
     from groundglow.run.commands import plan_job  # noqa: PLC0415  (help must not wait for the libraries)
 
-    raise typer.Exit(plan_job(job, as_json=as_json))
+    raise typer.Exit(plan_job(job, output=output, as_json=as_json, detailed=detailed))
+
+
+@app.command(epilog=EXIT_CODES)
+def catalogue(
+    output: Annotated[str, typer.Argument(metavar="OUTPUT", help="Output folder (or s3:// address) of a job.")],
+) -> None:
+    """Make the STAC collection of an output folder anew from the scenes in it.
+
+    Every run keeps the collection up to date; this is for folders that were moved in, out or deleted.
+    """
+    from groundglow.run.commands import rebuild_catalogue  # noqa: PLC0415  (help must not wait for the libraries)
+
+    raise typer.Exit(rebuild_catalogue(output))
+
+
 
 
 def main() -> None:

@@ -6,31 +6,60 @@ import json
 import signal
 import sys
 import time
-from collections.abc import Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Iterable, Iterator
+from contextlib import ExitStack, closing, contextmanager
+from itertools import chain
 from pathlib import Path
 from types import FrameType
+from typing import Any
 
-from groundglow import __version__
-from groundglow.errors import ConfigError, GroundglowError
+from groundglow.errors import ConfigError, InputError
+from groundglow.run.batch import Batch, BatchSettings, LocalRunner, Runner
+from groundglow.run.batch_entry import SceneEntry
+from groundglow.run.batch_lists import wanted_scenes
+from groundglow.run.batch_memory import Memory
+from groundglow.run.batch_plan import PlanSettings, plan_batch
+from groundglow.run.batch_state import job_digest
+from groundglow.run.catalogue import Catalogue
 from groundglow.run.config import Job, read_job
-from groundglow.run.fingerprint import scene_fingerprint
-from groundglow.run.outcome import SceneOutcome, describe_grid
-from groundglow.run.plan import ScenePlan, plan_scene
+from groundglow.run.outcome import SceneOutcome
 from groundglow.run.progress import progress_for
-from groundglow.run.publish import locked, recover
-from groundglow.run.scene_run import run_scene
-from groundglow.run.scheduler import Cluster, Threads, available_cores
-from groundglow.run.table import outcome_table, plan_table
-from groundglow.scene.open import open_scene
+from groundglow.run.publish_place import Place
+from groundglow.run.publish_store import place_at
+from groundglow.run.report import EventLog, begin_folder, last_measured, run_summary, write_report
+from groundglow.run.scheduler import available_cores
+from groundglow.run.table import batch_plan_table, outcome_table
 
-ALL_DONE, NOTHING_DONE, SOME_FAILED = 0, 3, 4
+ALL_DONE, USAGE, NOTHING_DONE, SOME_FAILED = 0, 2, 3, 4
+MEMORY = "seen.sqlite"
 
 
 def run_job(
-    path: Path, *, output: Path | None, workers: int | None, scheduler: str, quiet: bool, as_json: bool
+    path: Path,
+    *,
+    output: str | None,
+    workers: int | None,
+    scheduler: str,
+    quiet: bool,
+    as_json: bool,
+    force: bool,
 ) -> int:
     """Run all scenes of a job and tell what came out.
+
+    Parameters
+    ----------
+    path : Path
+        The job file.
+    output : str or None
+        Where results go instead of the job's output.
+    workers : int or None
+        Threads instead of the job's.
+    scheduler : str
+        "threads", "processes[:N]" or the address of a Dask scheduler.
+    quiet, as_json : bool
+        No progress and no table; the report as JSON.
+    force : bool
+        Make again what is up to date.
 
     Returns
     -------
@@ -41,39 +70,46 @@ def run_job(
     ------
     GroundglowError
         If the job cannot be followed, or nothing can be written.
+    KeyboardInterrupt
+        If the run was asked to end; nothing half-written is left and the report is written.
     """
     job = read_job(path)
-    began = time.perf_counter()
-    folder = output or path.parent / job.output
-    outcomes = []
-    with locked(folder), _terminable(), _scheduler(scheduler, workers or job.run.workers) as chosen:
-        recover(folder)
-        progress = progress_for(quiet=quiet)
-        for scene_path in scene_paths(job, path.parent):
-            try:
-                plan = plan_scene(job, path.parent, open_scene(str(scene_path)))
-                identity = scene_fingerprint(job, plan)
-                outcome = run_scene(plan, identity, folder, chosen, progress, durable=job.run.durable)
-            except ConfigError:
-                raise
-            except GroundglowError as error:
-                outcome = SceneOutcome(name=scene_path.stem, status="failed", reason=str(error))
-                print(f"groundglow: {error}", file=sys.stderr)
-            outcomes.append(outcome)
-    seconds = time.perf_counter() - began
+    folder = path.parent if scheduler == "threads" else path.parent.absolute()
+    entries = _first_known(wanted_scenes(job, folder))
+    place = place_at(_output(job, folder, output))
+    began = time.monotonic()
+    with ExitStack() as held:
+        held.enter_context(place.locked())
+        held.enter_context(_terminable())
+        runner = held.enter_context(closing(_runner(scheduler, workers or job.run.workers, place)))
+        batch = _run_batch(held, job, folder, place, runner, entries, quiet=quiet, force=force, began=began)
+    seconds = time.monotonic() - began
+    outcomes = batch.outcomes
     if as_json:
-        print(json.dumps(_summary(outcomes, folder, seconds), indent=2))
+        print(
+            json.dumps(
+                run_summary(outcomes, place.address, seconds, ended="complete", workers=runner.workers),
+                indent=2,
+            )
+        )
     elif not quiet:
-        print(outcome_table(outcomes, seconds))
-        print(f"\nLayers are in {folder.resolve()}")
-    failed = sum(outcome.status == "failed" for outcome in outcomes)
-    if failed == len(outcomes):
-        return NOTHING_DONE
-    return SOME_FAILED if failed else ALL_DONE
+        print(outcome_table(outcomes, seconds) if outcomes else "no scene is wanted")
+        print(f"\nLayers are in {place.address}")
+    return _exit_code(outcomes, all_usage=batch.all_usage)
 
 
-def plan_job(path: Path, *, as_json: bool) -> int:
-    """Tell what a run of the job would do.
+def plan_job(path: Path, *, output: str | None, as_json: bool, detailed: int) -> int:
+    """Tell what a run of the job would do, and why.
+
+    Parameters
+    ----------
+    path : Path
+        The job file.
+    output : str or None
+        As for :func:`run_job`.
+    as_json : bool
+    detailed : int
+        How many of the scenes to be made are opened for their grids; the others are counted.
 
     Returns
     -------
@@ -86,80 +122,118 @@ def plan_job(path: Path, *, as_json: bool) -> int:
         If the job or one of its scenes cannot be followed.
     """
     job = read_job(path)
-    plans = [plan_scene(job, path.parent, open_scene(str(scene))) for scene in scene_paths(job, path.parent)]
-    workers = job.run.workers or available_cores()
-    if as_json:
-        print(json.dumps({"scenes": [plan_as_json(plan, workers) for plan in plans]}, indent=2))
-    else:
-        print(plan_table([plan_as_json(plan, workers) for plan in plans]))
+    place = place_at(_output(job, path.parent, output))
+    run_folder = place.run_folder()
+    with closing(Memory(run_folder / MEMORY if run_folder else None, read_only=True)) as memory:
+        settings = PlanSettings(
+            job, path.parent, place, job_digest(job, path.parent), job.run.workers or available_cores(),
+            last_measured(run_folder), detailed,
+        )  # fmt: skip
+        planned = plan_batch(wanted_scenes(job, path.parent), settings, memory)
+    print(json.dumps(planned, indent=2) if as_json else batch_plan_table(planned))
     return ALL_DONE
 
 
-def plan_as_json(plan: ScenePlan, workers: int) -> dict[str, object]:
-    """A plan in plain values."""
-    return {
-        "scene": plan.name,
-        "grid": describe_grid(plan.work.grid),
-        "band": plan.band.number,
-        "blocks": len(plan.blocks),
-        "layers": list(plan.work.formats),
-        "peak_memory_mib": round(plan.peak_mebibytes(workers)),
-        "disk_mib": round(plan.disk_bytes() / 2**20, 1),
-        "method": plan.method,
-        "notes": list(plan.scene.notes),
-    }
+def rebuild_catalogue(output: str) -> int:
+    """Make the STAC collection of an output place anew from its folders.
 
-
-def scene_paths(job: Job, folder: Path) -> list[Path]:
-    """The scene descriptions a job names, each once, sorted within a pattern.
+    Returns
+    -------
+    int
+        The exit code.
 
     Raises
     ------
-    ConfigError
-        If a name or pattern meets nothing.
+    GroundglowError
+        If the place does not exist, is in use, or cannot be written.
     """
-    found: dict[Path, None] = {}
-    for name in job.scenes:
-        if any(mark in name for mark in "*?["):
-            absolute = Path(name).is_absolute()
-            root = Path(Path(name).anchor) if absolute else folder
-            pattern = str(Path(name).relative_to(root)) if absolute else name
-            matches = sorted(root.glob(pattern))
-        else:
-            matches = [folder / name] if (folder / name).exists() else []
-        if not matches:
-            raise ConfigError(
-                f"there is no scene {name!r}", where="scenes", remedy=f"Paths are relative to {folder.resolve()}"
-            )
-        found.update(dict.fromkeys(matches))
-    return list(found)
+    place = place_at(output)
+    if "://" not in output and not Path(output).is_dir():
+        raise InputError("there is no such folder", where=output)
+    with place.locked():
+        place.recover()
+        count = Catalogue(place).rebuild()
+    print(f"{count} scenes are in the collection of {place.address}")
+    return ALL_DONE
 
 
-def _summary(outcomes: Sequence[SceneOutcome], folder: Path, seconds: float) -> dict[str, object]:
-    return {
-        "groundglow": __version__,
-        "output": str(folder.resolve()),
-        "seconds": round(seconds, 3),
-        "scenes": [outcome.as_json() for outcome in outcomes],
-    }
+def _run_batch(
+    held: ExitStack,
+    job: Job,
+    folder: Path,
+    place: Place,
+    runner: Runner,
+    entries: Iterable[SceneEntry],
+    *,
+    quiet: bool,
+    force: bool,
+    began: float,
+) -> Batch:
+    """Run the batch and write its report, however it ends."""
+    place.recover()
+    run_folder = place.run_folder()
+    if run_folder is not None:
+        begin_folder(run_folder)
+    log = held.enter_context(closing(EventLog(run_folder)))
+    memory = held.enter_context(closing(Memory(run_folder / MEMORY if run_folder else None)))
+    progress = held.enter_context(closing(progress_for(quiet=quiet)))
+    catalogue = Catalogue(place)
+    catalogue.refresh()
+    settings = BatchSettings(job, folder, place, job_digest(job, folder), force)
+    batch = Batch(settings, runner, log, memory, catalogue, progress, _say_failure)
+    log.tell("run began", output=place.address, workers=runner.workers)
+    ended = "stopped"
+    try:
+        batch.run(entries)
+        ended = "complete"
+    finally:
+        outcomes = batch.outcomes
+        seconds = time.monotonic() - began
+        log.tell("run ended", how=ended, seconds=round(seconds, 3), scenes=len(outcomes))
+        if run_folder is not None:
+            summary = run_summary(outcomes, place.address, seconds, ended=ended, workers=runner.workers)
+            write_report(run_folder, summary, outcomes)
+    return batch
 
 
-@contextmanager
-def _scheduler(name: str, workers: int | None) -> Iterator[Threads | Cluster]:
-    if name == "threads":
-        yield Threads(workers)
-        return
-    if name.split(":")[0] not in ("processes", "tcp", "tls"):
+def _exit_code(outcomes: list[SceneOutcome], *, all_usage: bool) -> int:
+    failed = sum(outcome.status == "failed" for outcome in outcomes)
+    if failed == 0:
+        return ALL_DONE
+    if failed == len(outcomes):
+        return USAGE if all_usage else NOTHING_DONE
+    return SOME_FAILED
+
+
+def _say_failure(outcome: SceneOutcome) -> None:
+    print(f"groundglow: {outcome.reason}", file=sys.stderr)
+
+
+def _output(job: Job, folder: Path, output: str | None) -> str:
+    if output is not None:
+        return output
+    return job.output if "://" in job.output else str(folder / job.output)
+
+
+def _first_known(entries: Iterator[SceneEntry]) -> Iterator[SceneEntry]:
+    """The same entries, the first one found before anything is locked or written."""
+    for first in entries:
+        return chain([first], entries)
+    return iter(())
+
+
+def _runner(scheduler: str, workers: int | None, place: Place) -> Runner:
+    if scheduler == "threads":
+        return LocalRunner(workers)
+    if scheduler.split(":", maxsplit=1)[0] not in ("processes", "tcp", "tls"):
         raise ConfigError(
-            f"there is no scheduler {name!r}",
+            f"there is no scheduler {scheduler!r}",
             where="--scheduler",
             remedy="Give 'threads', 'processes', 'processes:N', or tcp://host:port of a Dask scheduler",
         )
-    cluster = Cluster(name)
-    try:
-        yield cluster
-    finally:
-        cluster.close()
+    from groundglow.run.batch_cluster import ClusterRunner  # noqa: PLC0415  (most runs need no cluster)
+
+    return ClusterRunner(scheduler, place)
 
 
 @contextmanager
@@ -170,7 +244,7 @@ def _terminable() -> Iterator[None]:
         raise KeyboardInterrupt
 
     try:
-        before = signal.signal(signal.SIGTERM, interrupt)
+        before: Any = signal.signal(signal.SIGTERM, interrupt)
     except ValueError:
         # Not the main thread: signals are not ours to handle there.
         yield

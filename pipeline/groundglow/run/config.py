@@ -15,6 +15,7 @@ from groundglow.documents import Document, checked, read_toml
 from groundglow.errors import ConfigError
 from groundglow.quantities import DEFAULT_MASK, FLAG, QUANTITIES
 from groundglow.run.config_atmosphere import Atmosphere
+from groundglow.run.config_batch import Retry, Select
 from groundglow.run.config_emissivity import Emissivity
 from groundglow.run.measures import Kelvin, Metres
 
@@ -131,6 +132,8 @@ class Job(Document):
         default_factory=dict,
         description="Rasters of known values by layer name; the run reports the map's error against them.",
     )
+    select: Select = Field(default_factory=Select)
+    retry: Retry = Field(default_factory=Retry)
     run: Execution = Field(default_factory=Execution)
 
     @field_validator("scenes", mode="before")

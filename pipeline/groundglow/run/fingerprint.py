@@ -18,7 +18,7 @@ from groundglow.run.config import Job
 from groundglow.run.plan import ScenePlan
 
 # Parts of a job that never change a byte of the layers.
-_WITHOUT_EFFECT = {"scenes", "output", "run"}
+_WITHOUT_EFFECT = {"scenes", "output", "run", "select", "retry"}
 
 
 @dataclass(frozen=True)
@@ -85,7 +85,7 @@ def scene_fingerprint(job: Job, plan: ScenePlan) -> SceneFingerprint:
         for role, source in plan.inputs()
         for one in _files(source)
     )
-    configuration = job.model_dump(mode="json", exclude=_WITHOUT_EFFECT)
+    configuration = decisive_configuration(job)
     decisive = {
         "version": __version__,
         "inputs": sorted(
@@ -97,6 +97,11 @@ def scene_fingerprint(job: Job, plan: ScenePlan) -> SceneFingerprint:
     }
     text = json.dumps(decisive, sort_keys=True)
     return SceneFingerprint(hashlib.sha256(text.encode()).hexdigest(), inputs, configuration)
+
+
+def decisive_configuration(job: Job) -> dict[str, Any]:
+    """The job without the parts that never change a byte of the layers."""
+    return job.model_dump(mode="json", exclude=_WITHOUT_EFFECT)
 
 
 def plain(value: object) -> Any:

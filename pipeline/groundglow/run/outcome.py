@@ -11,7 +11,7 @@ from groundglow.layers.geotiff import LayerSummary
 from groundglow.raster.grid import Grid
 from groundglow.run.worker import ErrorSums
 
-Status = Literal["done", "nothing valid", "up to date", "failed"]
+Status = Literal["done", "nothing valid", "up to date", "left out", "failed"]
 
 
 @dataclass(frozen=True)
@@ -48,6 +48,12 @@ class SceneOutcome:
     seconds : float
     notes : tuple of str
         What was assumed.
+    address : str
+        The description the scene came from.
+    attempts : int
+        How often it was tried.
+    pixels : int
+        Of its grid.
     """
 
     name: str
@@ -61,6 +67,9 @@ class SceneOutcome:
     reference: Mapping[str, KnownError] = field(default_factory=dict)
     seconds: float = 0.0
     notes: tuple[str, ...] = ()
+    address: str = ""
+    attempts: int = 1
+    pixels: int = 0
 
     def as_json(self) -> dict[str, Any]:
         """Plain values for a JSON report."""
@@ -118,6 +127,7 @@ def outcome_of(
         reference=_joined(errors),
         seconds=seconds,
         notes=notes,
+        pixels=grid.height * grid.width,
     )
 
 

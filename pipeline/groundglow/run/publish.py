@@ -11,6 +11,7 @@ from __future__ import annotations
 import fcntl
 import json
 import os
+import re
 import shutil
 import socket
 from collections.abc import Iterator
@@ -20,9 +21,13 @@ from pathlib import Path
 
 from groundglow.errors import BusyError, OutputError
 
-LOCK_NAME = ".groundglow.lock"
-_BUILDING = ".{name}.building"
+# Everything a run keeps for itself: the lock, its memory, reports and logs.
+RUN_FOLDER = ".groundglow"
+LOCK_NAME = RUN_FOLDER
+_LOCK_FILE = "lock"
+_BUILDING = ".{name}.building-{token}"
 _ASIDE = ".{name}.aside"
+_BUILDING_NAME = re.compile(r"^\..+\.building-[0-9a-z-]*$")
 
 
 @contextmanager
@@ -30,7 +35,7 @@ def locked(output: Path) -> Iterator[None]:
     """Hold the output folder, made if absent, for this process.
 
     The lock is the operating system's own on an open file: it ends with its holder, so a dead
-    process leaves none behind.
+    process leaves none behind, whatever the file still says.
 
     Raises
     ------
@@ -40,8 +45,8 @@ def locked(output: Path) -> Iterator[None]:
         The folder cannot be made or written.
     """
     try:
-        output.mkdir(parents=True, exist_ok=True)
-        handle = (output / LOCK_NAME).open("a+", encoding="utf-8")
+        (output / RUN_FOLDER).mkdir(parents=True, exist_ok=True)
+        handle = (output / RUN_FOLDER / _LOCK_FILE).open("a+", encoding="utf-8")
     except OSError as error:
         raise OutputError(
             f"the output folder cannot be written ({error.strerror})",
@@ -54,33 +59,49 @@ def locked(output: Path) -> Iterator[None]:
         except OSError:
             handle.seek(0)
             raise BusyError(
-                f"the output folder is in use by {_holder(handle.read())}",
+                f"the output folder is in use by {holder(handle.read())}",
                 where=str(output),
                 remedy="Wait until that run has ended, or write to another folder",
             ) from None
         handle.seek(0)
         handle.truncate()
-        json.dump(
-            {
-                "process": os.getpid(),
-                "host": socket.gethostname(),
-                "since": datetime.now(UTC).isoformat(timespec="seconds"),
-            },
-            handle,
-        )
+        handle.write(this_process())
         handle.flush()
         yield
 
 
-def building_folder(output: Path, name: str) -> Path:
-    """A fresh hidden folder in which a scene is built; what a killed run left there is removed.
+def this_process() -> str:
+    """Who holds a lock, for the one who finds it taken."""
+    since = datetime.now(UTC).isoformat(timespec="seconds")
+    return json.dumps({"process": os.getpid(), "host": socket.gethostname(), "since": since})
+
+
+def holder(text: str) -> str:
+    """What :func:`this_process` said, in words."""
+    try:
+        known = json.loads(text)
+    except ValueError:
+        return "another run"
+    return f"process {known.get('process')} on {known.get('host')} since {known.get('since')}"
+
+
+def building_folder(output: Path, name: str, token: str = "") -> Path:
+    """A fresh hidden folder in which a scene is built.
+
+    Parameters
+    ----------
+    output : Path
+    name : str
+        The scene's name.
+    token : str
+        Tells apart two attempts that may overlap, as when a cluster believes a worker dead that is not.
 
     Raises
     ------
     OutputError
         The folder cannot be made.
     """
-    folder = output / _BUILDING.format(name=name)
+    folder = output / _BUILDING.format(name=name, token=token)
     try:
         if folder.exists():
             shutil.rmtree(folder)
@@ -90,14 +111,14 @@ def building_folder(output: Path, name: str) -> Path:
     return folder
 
 
-def publish(output: Path, name: str, *, durable: bool = False) -> Path:
+def publish(output: Path, name: str, token: str = "", *, durable: bool = False) -> Path:
     """Put the built folder in place of the scene's old one.
 
     Parameters
     ----------
     output : Path
-    name : str
-        The scene's name.
+    name, token : str
+        As for :func:`building_folder`.
     durable : bool
         Flush everything to disk first, against a power loss.
 
@@ -111,47 +132,70 @@ def publish(output: Path, name: str, *, durable: bool = False) -> Path:
     OutputError
         If a rename fails; the old folder is then still in place or put back.
     """
-    building = output / _BUILDING.format(name=name)
+    building = output / _BUILDING.format(name=name, token=token)
     aside = output / _ASIDE.format(name=name)
     target = output / name
-    if durable:
-        for path in [*building.rglob("*"), building]:
-            _flush(path)
     try:
+        if durable:
+            for path in [*building.rglob("*"), building]:
+                _flush(path)
         if target.exists():
             target.rename(aside)
         building.rename(target)
         if durable:
             _flush(output)
-        if aside.exists():
-            shutil.rmtree(aside)
     except OSError as error:
-        recover(output)
+        discard(output, name, token)
         raise OutputError(
             f"the finished folder cannot be put in place ({error.strerror})", where=str(target)
         ) from error
+    finally:
+        # Also when interrupted between the two renames.
+        if aside.exists():
+            _settle_aside(aside, target)
     return target
 
 
-def discard(output: Path, name: str) -> None:
-    """Remove what was built of a scene that will not be finished."""
-    shutil.rmtree(output / _BUILDING.format(name=name), ignore_errors=True)
+def discard(output: Path, name: str | None, token: str = "") -> None:
+    """Remove what was built of a scene that will not be finished; without a name, what bears the token."""
+    folders = [output / _BUILDING.format(name=name, token=token)]
+    if name is None:
+        folders = list(output.glob(_BUILDING.format(name="*", token=token)))
+    for folder in folders:
+        shutil.rmtree(folder, ignore_errors=True)
 
 
 def recover(output: Path) -> None:
     """Undo what a killed run left: an old folder aside is put back or removed, half-built ones removed.
 
     Call it only while the output folder is locked.
+
+    Raises
+    ------
+    OutputError
+        If a leftover cannot be moved or removed.
     """
     prefix, suffix = _ASIDE.split("{name}")
-    for aside in output.glob(_ASIDE.format(name="*")):
-        target = output / aside.name[len(prefix) : -len(suffix)]
-        if target.exists():
-            shutil.rmtree(aside)
-        else:
-            aside.rename(target)
-    for building in output.glob(_BUILDING.format(name="*")):
-        shutil.rmtree(building)
+    try:
+        with os.scandir(output) as entries:
+            hidden = sorted(entry.name for entry in entries if entry.name.startswith("."))
+        for name in hidden:
+            if name.endswith(suffix):
+                _settle_aside(output / name, output / name[len(prefix) : -len(suffix)])
+            elif _BUILDING_NAME.match(name):
+                shutil.rmtree(output / name)
+    except OSError as error:
+        raise OutputError(
+            f"what an interrupted run left cannot be tidied up ({error.strerror})", where=str(output)
+        ) from error
+
+
+def _settle_aside(aside: Path, target: Path) -> None:
+    """Remove the old folder aside where a new one is in place, else put it back."""
+    if target.exists():
+        shutil.rmtree(aside)
+    else:
+        aside.rename(target)
 
 
 def free_bytes(output: Path) -> int:
@@ -165,11 +209,3 @@ def _flush(path: Path) -> None:
         os.fsync(handle)
     finally:
         os.close(handle)
-
-
-def _holder(text: str) -> str:
-    try:
-        known = json.loads(text)
-    except ValueError:
-        return "another run"
-    return f"process {known.get('process')} on {known.get('host')} since {known.get('since')}"

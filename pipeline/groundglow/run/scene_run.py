@@ -1,48 +1,64 @@
-"""Runs one planned scene: blocks out, encoded tiles in, layers, styles, preview, and last the Item."""
+"""Builds one planned scene in a folder: blocks out, encoded tiles in, layers, styles, preview, last the Item."""
 
 from __future__ import annotations
 
 import time
+from collections.abc import Callable
 from contextlib import ExitStack
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any, NamedTuple
 
 from groundglow.errors import InputError, OutputError
 from groundglow.layers.geotiff import LayerSummary, LayerWriter
 from groundglow.layers.tags import text_of
 from groundglow.raster.environment import gdal_environment
+from groundglow.raster.grid import Block
 from groundglow.run.companions import write_companions
 from groundglow.run.fingerprint import SceneFingerprint
 from groundglow.run.outcome import SceneOutcome, outcome_of
 from groundglow.run.plan import ScenePlan
 from groundglow.run.progress import Progress
-from groundglow.run.publish import building_folder, discard, free_bytes, publish
+from groundglow.run.publish import free_bytes
 from groundglow.run.scheduler import Scheduler
 from groundglow.run.worker import BlockResult, ErrorSums, work_block
 
 
-def run_scene(
+class Walk(NamedTuple):
+    """What makes the layers of one block: a function, and what it needs to know of the scene."""
+
+    function: Callable[[Any, Block], BlockResult]
+    work: object
+
+
+def build_scene(
     plan: ScenePlan,
     fingerprint: SceneFingerprint,
-    output: Path,
+    folder: Path,
     scheduler: Scheduler,
     progress: Progress,
     *,
+    place: str,
     durable: bool = False,
+    walk: Walk | None = None,
 ) -> SceneOutcome:
-    """Make all layers of one scene and put them in place.
+    """Make all layers of one scene and what stands beside them.
 
     Parameters
     ----------
     plan : ScenePlan
     fingerprint : SceneFingerprint
         Of everything that decides the result; written into the Item.
-    output : Path
-        The locked output folder.
+    folder : Path
+        An empty folder that no reader looks into yet.
     scheduler : Scheduler
     progress : Progress
+    place : str
+        Where the folder's content will be in the end, for the outcome.
     durable : bool
-        Flush everything to disk before the scene counts as done.
+        Flush the Item to disk before it counts as written.
+    walk : Walk, optional
+        What makes the layers of a block; default: the fused chain.
 
     Returns
     -------
@@ -51,28 +67,38 @@ def run_scene(
     Raises
     ------
     GroundglowError
-        If an input cannot be read or the output not written; nothing is left behind then.
+        If an input cannot be read or the output not written.
     """
     began = time.perf_counter()
-    _refuse_a_full_disk(plan, output)
-    folder = building_folder(output, plan.name)
-    try:
-        summaries, errors = _make_layers(plan, folder, scheduler, progress)
-        outcome = outcome_of(
-            plan.name, plan.work.grid, summaries, errors,
-            folder=str(output / plan.name), seconds=time.perf_counter() - began, notes=plan.scene.notes,
-        )  # fmt: skip
-        write_companions(plan, folder, summaries, outcome, fingerprint, durable=durable)
-        publish(output, plan.name, durable=durable)
-    except BaseException:
-        # Interrupts included: a reader must never find half a scene.
-        discard(output, plan.name)
-        raise
+    refuse_a_full_disk(plan, folder.parent)
+    summaries, errors = _make_layers(plan, folder, scheduler, progress, walk or Walk(work_block, plan.work))
+    outcome = outcome_of(
+        plan.name, plan.work.grid, summaries, errors,
+        folder=place, seconds=time.perf_counter() - began, notes=plan.scene.notes,
+    )  # fmt: skip
+    write_companions(plan, folder, summaries, outcome, fingerprint, durable=durable)
     return outcome
 
 
+def refuse_a_full_disk(plan: ScenePlan, output: Path) -> None:
+    """Refuse before spending.
+
+    Raises
+    ------
+    OutputError
+        If the disk has less space than the scene needs in passing.
+    """
+    needed, free = plan.disk_bytes(), free_bytes(output)
+    if needed > free:
+        raise OutputError(
+            f"the disk has {free / 2**20:.0f} MiB left, and the scene needs about {needed / 2**20:.0f} MiB in passing",
+            where=str(output),
+            remedy="Free some space, write fewer layers, or choose another folder",
+        )
+
+
 def _make_layers(
-    plan: ScenePlan, folder: Path, scheduler: Scheduler, progress: Progress
+    plan: ScenePlan, folder: Path, scheduler: Scheduler, progress: Progress, walk: Walk
 ) -> tuple[dict[str, LayerSummary], list[ErrorSums]]:
     errors: list[ErrorSums] = []
     tally = _EmissivityTally()
@@ -90,15 +116,15 @@ def _make_layers(
                 writers[name].add(encoded)
             errors.extend(result.errors)
             tally.add(result)
-            progress.advance(result.block.height * result.block.width)
+            progress.advance(plan.name, result.block.height * result.block.width)
 
         progress.start(plan.name, work.grid.height * work.grid.width)
         try:
-            scheduler.spread(work_block, work, plan.blocks, sink)
+            scheduler.spread(walk.function, walk.work, plan.blocks, sink)
             tally.refuse_if_mostly_impossible(plan)
             return {name: writer.finish() for name, writer in writers.items()}, errors
         finally:
-            progress.end()
+            progress.end(plan.name)
 
 
 @dataclass
@@ -122,13 +148,3 @@ class _EmissivityTally:
                 where=paths or "emissivity",
                 remedy="Check the raster's scale and offset: an emissivity in percent needs scale = 0.01",
             )
-
-
-def _refuse_a_full_disk(plan: ScenePlan, output: Path) -> None:
-    needed, free = plan.disk_bytes(), free_bytes(output)
-    if needed > free:
-        raise OutputError(
-            f"the disk has {free / 2**20:.0f} MiB left, and the scene needs about {needed / 2**20:.0f} MiB in passing",
-            where=str(output),
-            remedy="Free some space, write fewer layers, or choose another folder",
-        )

@@ -1,8 +1,8 @@
-"""Spreads blocks over threads of this process or over a Dask cluster.
+"""Spreads blocks over threads of this process.
 
 The unit of work is one block: a function of the scene's work and the block that gives back encoded
 tiles. Its result goes to ``sink`` in this process as soon as it is there, so that memory is bounded
-by the blocks in flight, whatever the raster's size.
+by the blocks in flight, whatever the raster's size. Several scenes may share the threads.
 """
 
 from __future__ import annotations
@@ -16,15 +16,11 @@ from typing import Any, Protocol, TypeVar
 
 import dask.threaded
 
-from groundglow.errors import GroundglowError, InputError
+from groundglow.run.retry import StoppedError
 
 Work = TypeVar("Work")
 Item = TypeVar("Item")
 Result = TypeVar("Result")
-
-# Blocks submitted ahead to each thread of a cluster: enough to hide the way there and back.
-_AHEAD = 3
-_RETRIES = 2
 
 
 class Scheduler(Protocol):
@@ -45,6 +41,23 @@ def available_cores() -> int:
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
+class InTurn:
+    """One item after another in the calling thread, as a worker of a cluster does it."""
+
+    workers = 1
+
+    def spread(
+        self,
+        function: Callable[[Work, Item], Result],
+        work: Work,
+        items: Sequence[Item],
+        sink: Callable[[Result], None],
+    ) -> None:
+        """See :class:`Scheduler`."""
+        for item in items:
+            sink(function(work, item))
+
+
 class Threads:
     """Dask's threaded scheduler in this process.
 
@@ -56,6 +69,8 @@ class Threads:
 
     def __init__(self, workers: int | None = None) -> None:
         self.workers = workers or available_cores()
+        self._pool = ThreadPoolExecutor(self.workers, thread_name_prefix="groundglow")
+        self._stopped = threading.Event()
 
     def spread(
         self,
@@ -64,16 +79,22 @@ class Threads:
         items: Sequence[Item],
         sink: Callable[[Result], None],
     ) -> None:
-        """See :class:`Scheduler`."""
+        """See :class:`Scheduler`.
+
+        Raises
+        ------
+        StoppedError
+            After :meth:`stop`.
+        """
         lock = threading.Lock()
-        stopped = threading.Event()
+        failed = threading.Event()
 
         def guarded(item: Item) -> Result | None:
-            # After a failure or an interrupt the tasks still queued must end at once.
-            return None if stopped.is_set() else function(work, item)
+            # After a failure or a stop the blocks still queued must end at once.
+            return None if failed.is_set() or self._stopped.is_set() else function(work, item)
 
         def deliver(result: Result | None) -> None:
-            if result is not None:
+            if result is not None and not failed.is_set():
                 with lock:
                     sink(result)
 
@@ -81,93 +102,21 @@ class Threads:
         for index, item in enumerate(items):
             graph["block", index] = (partial(guarded, item),)  # type: ignore[assignment]
             graph["sink", index] = (deliver, ("block", index))
-        pool = ThreadPoolExecutor(self.workers, thread_name_prefix="groundglow")
         try:
-            dask.threaded.get(graph, [("sink", index) for index in range(len(items))], pool=pool)
+            dask.threaded.get(graph, [("sink", index) for index in range(len(items))], pool=self._pool)
         finally:
-            stopped.set()
-            pool.shutdown(wait=True, cancel_futures=True)
+            failed.set()
+            with lock:
+                # Whoever delivers now has finished before the caller closes what the sink writes to.
+                pass
+        if self._stopped.is_set():
+            raise StoppedError("the run was stopped")
 
-
-class Cluster:
-    """An existing Dask cluster, or one of local processes.
-
-    Parameters
-    ----------
-    address : str
-        ``tcp://host:port`` of a running scheduler, or ``processes`` / ``processes:N`` for a
-        local cluster of N single-thread processes, started by spawning.
-
-    Raises
-    ------
-    InputError
-        If there is no scheduler at the address, or the cluster's package is not installed.
-    """
-
-    def __init__(self, address: str) -> None:
-        try:
-            from distributed import Client, LocalCluster  # noqa: PLC0415  (costs a second to import)
-        except ImportError as error:
-            raise InputError(
-                "a Dask cluster needs the package 'distributed'",
-                where="--scheduler",
-                remedy="Install it with: pip install 'groundglow[cluster]'",
-            ) from error
-        self._local = None
-        if address.split(":")[0] == "processes":
-            count = int(address.partition(":")[2] or available_cores())
-            self._local = LocalCluster(n_workers=count, threads_per_worker=1, dashboard_address=None)
-            address = self._local.scheduler_address
-        try:
-            self.client = Client(address, timeout=15)
-        except (OSError, TimeoutError, ValueError) as error:
-            raise InputError(
-                f"no Dask scheduler answers at {address}",
-                where="--scheduler",
-                remedy="Check the address and that the scheduler is running",
-            ) from error
-
-    @property
-    def workers(self) -> int:
-        """Threads of the cluster now."""
-        return max(1, sum(self.client.nthreads().values()))
-
-    def spread(
-        self,
-        function: Callable[[Work, Item], Result],
-        work: Work,
-        items: Sequence[Item],
-        sink: Callable[[Result], None],
-    ) -> None:
-        """See :class:`Scheduler`."""
-        from distributed import as_completed  # noqa: PLC0415  (see above)
-        from distributed.scheduler import KilledWorker  # noqa: PLC0415  (see above)
-
-        waiting = iter(items)
-        shared = self.client.scatter(work, broadcast=True, hash=False)
-        running = as_completed(with_results=True, raise_errors=True)
-
-        def submit() -> None:
-            for item in waiting:
-                running.add(self.client.submit(function, shared, item, pure=False, retries=_RETRIES))
-                return
-
-        for _ in range(_AHEAD * self.workers):
-            submit()
-        try:
-            for future, result in running:
-                sink(result)
-                future.release()
-                submit()
-        except KilledWorker as error:
-            raise GroundglowError(
-                "a worker of the cluster died again and again on the same block",
-                where="--scheduler",
-                remedy="Give the workers more memory or set a smaller run.block",
-            ) from error
+    def stop(self) -> None:
+        """Let everything under way end at its next block."""
+        self._stopped.set()
 
     def close(self) -> None:
-        """Leave the cluster; a local one ends."""
-        self.client.close()
-        if self._local is not None:
-            self._local.close()
+        """Wait for the blocks under way and end the threads."""
+        self._stopped.set()
+        self._pool.shutdown(wait=True, cancel_futures=True)

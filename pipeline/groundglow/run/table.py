@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from typing import Any
 
 from groundglow.run.outcome import SceneOutcome
+
+_MOST_ROWS = 200
 
 
 def aligned(rows: Sequence[Sequence[str]]) -> str:
@@ -59,22 +62,33 @@ def outcome_table(outcomes: Sequence[SceneOutcome], seconds: float) -> str:
     return "\n".join(lines)
 
 
-def plan_table(plans: Sequence[Mapping[str, object]]) -> str:
-    """What would be done for each scene."""
-    rows = [["scene", "grid", "band", "blocks", "memory MiB", "disk MiB", "layers"]]
-    for plan in plans:
-        layers = plan["layers"]
-        names = ", ".join(layers) if isinstance(layers, list) else ""
-        rows.append(
-            [
-                *(
-                    str(plan[key])
-                    for key in ("scene", "grid", "band", "blocks", "peak_memory_mib", "disk_mib")
-                ),
-                names,
-            ]
-        )
-    return aligned(rows)
+def batch_plan_table(planned: Mapping[str, Any]) -> str:
+    """What would be done for each scene, and why."""
+    rows = [["scene", "state", "why", "grid", "blocks", "memory MiB", "disk MiB"]]
+    keys = ("scene", "state", "why", "grid", "blocks", "peak_memory_mib", "disk_mib")
+    shown = [scene for scene in planned["scenes"] if scene["state"] != "not looked at"]
+    rows += [[str(scene.get(key, "-")) or "-" for key in keys] for scene in shown[:_MOST_ROWS]]
+    lines = [aligned(rows)] if shown else []
+    if len(shown) > _MOST_ROWS:
+        lines.append(f"and {len(shown) - _MOST_ROWS} more (all of them with --json)")
+    counts = ", ".join(f"{count} {state}" for state, count in planned["counts"].items())
+    lines.append(f"{len(planned['scenes'])} scenes: {counts or 'none is wanted'}")
+    layers = next((scene["layers"] for scene in shown if "layers" in scene), None)
+    if layers is not None:
+        lines.append(f"layers: {', '.join(layers)}")
+    guess = planned["estimate"]
+    lines.append(
+        f"about {_duration(guess['seconds'])}, {guess['peak_memory_mib']} MiB of memory and {guess['disk_mib']} MiB "
+        f"of disk on {guess['workers']} workers ({guess['worker_seconds_per_megapixel']:g} worker seconds a megapixel: "
+        f"{guess['constant_from']})"
+    )
+    return "\n".join(lines)
+
+
+def _duration(seconds: float) -> str:
+    if seconds < 120.0:
+        return f"{seconds:.0f} s"
+    return f"{seconds / 60.0:.0f} min" if seconds < 7200.0 else f"{seconds / 3600.0:.1f} h"
 
 
 def number(value: float | None, digits: int) -> str:
