@@ -129,6 +129,16 @@ def test_the_same_table_as_toml_and_as_csv() -> None:
     assert from_toml.named("tarpaulin").title == "tarpaulin"
 
 
+def test_the_ends_of_the_ranges_belong_to_them() -> None:
+    text = TOML.replace("value = 0.93\nuncertainty = 0.02", "value = 1.0\nuncertainty = 0.0")
+    found = class_table_from_toml(text, where="mine.toml").named("tarpaulin")
+    assert found.in_band(top_hat(10.6, 11.2)) == pytest.approx((1.0, 0.0))
+    # One and a half micrometres beyond the outermost interval, and no more.
+    assert found.in_band(top_hat(13.5, 14.5))[0] == pytest.approx(1.0)
+    with pytest.raises(DomainError, match="the band needs"):
+        found.in_band(top_hat(13.5, 14.6))
+
+
 def test_a_rasters_own_codes_can_be_named() -> None:
     table = shipped_class_table()
     found = table.by_code({80: "water", 50: "asphalt"})

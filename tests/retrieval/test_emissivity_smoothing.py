@@ -126,17 +126,17 @@ def test_blocks_with_their_halo_give_the_bytes_of_the_whole(block: int) -> None:
 
 
 def test_all_five_arrays_are_averaged_and_flags_stay_with_their_pixel() -> None:
-    weights = footprint_weights(90.0, 30.0)
-    sharp = raster_fields(padded(raster(), 1, 1), np.float32(0.01))
-    found = smooth_fields(sharp, weights, weights)
-    inner = (slice(1, -1), slice(1, -1))
+    rows, columns = footprint_weights(100.0, 30.0), footprint_weights(90.0, 30.0)
+    sharp = raster_fields(padded(raster(), 2, 1), np.float32(0.01))
+    found = smooth_fields(sharp, rows, columns)
+    inner = (slice(2, -2), slice(1, -1))
     assert found.flags.tolist() == sharp.flags[inner].tolist()
     known = ~np.isnan(sharp.band)
     for name in EmissivityFields.__dataclass_fields__:
         result, before = getattr(found, name), getattr(sharp, name)
         assert result.shape == (83, 101)
         if name != "flags":
-            np.testing.assert_array_equal(result, smooth(before, known, weights, weights))
+            np.testing.assert_array_equal(result, smooth(before, known, rows, columns))
 
 
 def test_an_edge_of_the_ground_is_drawn_no_sharper_than_the_sensor_sees_it() -> None:
