@@ -20,6 +20,7 @@ from groundglow.atmosphere.radiative_transfer import (
     spectrum,
 )
 from groundglow.atmosphere.sensor_height import SensorHeight
+from groundglow.physics.planck import radiance_slope, spectral_radiance
 from groundglow.physics.spectral_response import SpectralResponse
 
 Float = NDArray[np.float64]
@@ -29,6 +30,8 @@ Integer = NDArray[np.int64]
 _FLUX_CHANGE_HEIGHTS = 3
 # And at every fourth wavenumber: 20 cm-1 is the resolution of the band model.
 _FLUX_CHANGE_STEP = 4
+# A narrow band whose absorption is uneven needs three surface temperatures as well.
+_SINGLE_TEMPERATURE_COST = 0.04  # K
 
 
 def sky_flux(air: Profile, broadband: Spectrum, ground: float) -> float:
@@ -82,6 +85,7 @@ class Bands:
     weights: tuple[BandWeights, ...]
     places: tuple[slice, ...]
     spectrum: Spectrum
+    three_temperatures: tuple[bool, ...]
 
     @staticmethod
     def of(responses: Mapping[str, SpectralResponse], absorption: str) -> Bands:
@@ -94,11 +98,25 @@ class Bands:
             weights=weights,
             places=tuple(slice(s, s + w.index.size) for s, w in zip(starts, weights, strict=True)),
             spectrum=spectrum(index, absorption),
+            three_temperatures=tuple(w.width > NARROW_BAND for w in weights),
         )
 
     def temperatures(self, band: int, temperatures: Float) -> Float:
-        """One surface temperature for a narrow band, three for a wide one."""
-        return temperatures if self.weights[band].width > NARROW_BAND else temperatures[1:2]
+        """One surface temperature (the middle one) for a narrow band, three for a wide one."""
+        return temperatures if self.three_temperatures[band] else temperatures[1:2]
+
+    def weighted_for(
+        self, air: Profile, ground: float, secant: float, sensor: float | None, temperatures: Float
+    ) -> Bands:
+        """The same bands, with three temperatures where a single one would cost 0.04 K at the outer ones."""
+        seen = look_down(column(air, self.spectrum, ground, sensor), np.array([secant]), sensor)[0][0]
+        three = []
+        for wide, weights, place in zip(self.three_temperatures, self.weights, self.places, strict=True):
+            t = np.array([weights.planck_weight(float(at)) @ seen[place] for at in temperatures])
+            wavelength = weights.effective_wavelength
+            lever = spectral_radiance(wavelength, temperatures) / radiance_slope(wavelength, temperatures)
+            three.append(bool(wide or (np.abs(t / t[1] - 1.0) * lever).max() > _SINGLE_TEMPERATURE_COST))
+        return replace(self, three_temperatures=tuple(three))
 
 
 @dataclass(frozen=True)

@@ -38,6 +38,7 @@ _LOSCHMIDT = 2.6868e19  # cm-3
 _WATER_MASS = 2.989e-23  # g m-3 per ppmv and cm-3
 _GAS_AMOUNT = 3.7194e-21  # atm-cm km-1 per ppmv and cm-3
 _CONTINUUM_TEMPERATURE = 296.0  # K
+_COLD_CONTINUUM_TEMPERATURE = 260.0  # K
 _BOLTZMANN = 0.6952  # cm-1 K-1
 _OXYGEN_TEMPERATURE = 220.0  # K
 
@@ -107,8 +108,9 @@ def _spectrum(index: tuple[int, ...], name: str) -> Spectrum:
     tables = absorption_at(np.array(index, dtype=np.int64), name)
     runs = list(zip(tables.run_gas, tables.run_start, tables.run_stop, strict=True))
     wavenumber = tables.wavenumber
-    radiation = wavenumber * np.tanh(wavenumber / (2.0 * _BOLTZMANN * _CONTINUUM_TEMPERATURE))
-    room, cold = 1e-20 * radiation * tables.self_296, 1e-20 * radiation * tables.self_260
+    radiation = _radiation_term(wavenumber, _CONTINUUM_TEMPERATURE)
+    room = 1e-20 * radiation * tables.self_296
+    cold = 1e-20 * _radiation_term(wavenumber, _COLD_CONTINUUM_TEMPERATURE) * tables.self_260
     linear = {
         "foreign": 1e-20 * radiation * tables.foreign_296,
         **dict(zip(HALOCARBONS, tables.halocarbon_cross_section, strict=True)),
@@ -130,6 +132,11 @@ def _spectrum(index: tuple[int, ...], name: str) -> Spectrum:
         coefficients=np.array(list(linear.values())),
         absorbers=tuple(linear),
     )
+
+
+def _radiation_term(wavenumber: Float, temperature: float) -> Float:
+    """Stimulated emission and the rising part of the spectrum: v tanh(h c v / 2 k T). [cm-1]."""
+    return np.asarray(wavenumber * np.tanh(wavenumber / (2.0 * _BOLTZMANN * temperature)))
 
 
 @dataclass(frozen=True)

@@ -135,6 +135,8 @@ def solve_atmosphere(
     airs = [composed(profile, settings.composition) for profile in ordered]
     moistest = airs[int(np.argmax([air.column_water_vapour for air in airs]))]
     temperatures = _surface_temperatures(airs, view.ground_height[0])
+    low, steepest = view.ground_height[0], 1.0 / np.cos(np.radians(view.zenith_angle[1]))
+    bands = bands.weighted_for(moistest, low, float(steepest), view.sensor.above_sea(low), temperatures)
     height, secant = _nodes(moistest, bands, view, temperatures)
     solver = NodeSolver(bands, height, secant, view.sensor, temperatures, (y.size, x.size))
     flux = FluxPlan.full(settings.absorption, height.size) if settings.sky_flux else None
