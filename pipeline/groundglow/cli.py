@@ -12,7 +12,7 @@ from typing import Annotated
 
 import typer
 
-from groundglow import __version__
+from groundglow import __version__, cli_stages
 from groundglow.errors import GroundglowError
 
 EXIT_CODES = """\
@@ -123,6 +123,7 @@ def catalogue(
     raise typer.Exit(rebuild_catalogue(output))
 
 
+cli_stages.register(app)
 
 
 def main() -> None:
