@@ -31,6 +31,7 @@ def settings(response=NARROW, *, weighting=(300.0,), causes=2, **changes) -> Cha
         "table": table,
         "lowest_radiance": low,
         "highest_radiance": high,
+        "possible_range": (180.0, 1300.0),
         "calibrated_range": (240.0, 340.0),
         "saturation_temperature": 360.0,
         "weighting": np.array(weighting, np.float32),

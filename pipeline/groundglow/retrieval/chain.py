@@ -30,6 +30,8 @@ class ChainSettings:
         Radiance to temperature of the band used.
     lowest_radiance, highest_radiance : float
         Blackbody radiances outside which a result is physically impossible. [W m-2 sr-1 um-1]
+    possible_range : tuple of float
+        The same as temperatures. [K]
     calibrated_range : tuple of float
         Brightness temperatures within which the sensor is calibrated. [K]
     saturation_temperature : float
@@ -46,6 +48,7 @@ class ChainSettings:
     table: BandTable
     lowest_radiance: float
     highest_radiance: float
+    possible_range: tuple[float, float]
     calibrated_range: tuple[float, float]
     saturation_temperature: float
     weighting: Pixels
@@ -82,10 +85,9 @@ class EmissivityFields:
     flags: Flags
 
     def window(self, rows: slice, columns: slice) -> EmissivityFields:
-        """A contiguous copy of a part."""
-        return EmissivityFields(
-            *(np.ascontiguousarray(getattr(self, name)[rows, columns]) for name in self.__dataclass_fields__)
-        )
+        """A contiguous, writable copy of a part (one value spread over one pixel counts as contiguous)."""
+        parts = (getattr(self, name)[rows, columns] for name in self.__dataclass_fields__)
+        return EmissivityFields(*(np.require(part, requirements=["C", "W"]) for part in parts))
 
 
 def brightness_temperature(radiance: Pixels, flags: Flags, settings: ChainSettings) -> Pixels:
@@ -142,25 +144,31 @@ def surface_maps(
     """
     flags |= emissivity.flags
     found = invert(radiance, flags, emissivity.band, emissivity.band_uncertainty, air=air, settings=settings)
-    maps = {
-        "surface_temperature": found.temperature,
-        "emissivity": emissivity.band,
-        "broadband_emissivity": emissivity.broadband,
-        "transmittance": air[settings.weighting.size // 2],
-        "path_radiance": air[settings.weighting.size],
-        "sky_flux": air[settings.weighting.size + 2],
-        "surface_temperature_uncertainty": found.total,
-        "surface_temperature_uncertainty_pixel": found.pixel,
-        "surface_temperature_uncertainty_scene": found.scene,
-    }
-    if "surface_temperature_uncertainty_class" in wanted:
-        maps["surface_temperature_uncertainty_class"] = np.abs(found.surface_class)
-    maps["emitted_flux"], maps["emitted_flux_uncertainty"] = emitted_flux(found, emissivity)
+    maps = maps_of_inversion(found, emissivity)
+    maps["transmittance"] = air[settings.weighting.size // 2]
+    maps["path_radiance"] = air[settings.weighting.size]
+    maps["sky_flux"] = air[settings.weighting.size + 2]
     if {"leaving_flux", "net_longwave_flux"} & set(wanted):
         maps["leaving_flux"], maps["net_longwave_flux"] = surface_fluxes(
             maps["emitted_flux"], emissivity.broadband, maps["sky_flux"]
         )
     return maps
+
+
+def maps_of_inversion(found: Inversion, emissivity: EmissivityFields) -> dict[str, Pixels]:
+    """Temperature, its uncertainties and the emitted flux by name, whatever the method that found them."""
+    emitted, emitted_uncertainty = emitted_flux(found, emissivity)
+    return {
+        "surface_temperature": found.temperature,
+        "surface_temperature_uncertainty": found.total,
+        "surface_temperature_uncertainty_pixel": found.pixel,
+        "surface_temperature_uncertainty_class": np.abs(found.surface_class),
+        "surface_temperature_uncertainty_scene": found.scene,
+        "emissivity": emissivity.band,
+        "broadband_emissivity": emissivity.broadband,
+        "emitted_flux": emitted,
+        "emitted_flux_uncertainty": emitted_uncertainty,
+    }
 
 
 @dataclass(frozen=True)

@@ -14,7 +14,13 @@ from groundglow.atmosphere.sensor_height import SPACE, SensorHeight
 from groundglow.errors import ConfigError, InputError
 from groundglow.raster.band import RasterSource
 from groundglow.raster.grid import Grid
-from groundglow.run.config_atmosphere import Atmosphere, ExplicitAtmosphere, NoAtmosphere, Solved
+from groundglow.run.config_atmosphere import (
+    Atmosphere,
+    ColumnAtmosphere,
+    ExplicitAtmosphere,
+    NoAtmosphere,
+    Solved,
+)
 from groundglow.run.raster_range import HEIGHT_MARGIN, range_over
 from groundglow.scene.model import Scene, ThermalBand
 
@@ -75,7 +81,7 @@ def air_of_job(
     DomainError
         If the air is impossible.
     """
-    if isinstance(atmosphere, NoAtmosphere):
+    if isinstance(atmosphere, NoAtmosphere | ColumnAtmosphere):
         return None
     if isinstance(atmosphere, ExplicitAtmosphere):
         return _explicit(atmosphere, scene, band.number)

@@ -152,6 +152,7 @@ class Job(Document):
         for name in self.compare:
             if name not in self.layers.write or name == "quality":
                 raise ValueError(f"compare names {name!r}, which is not among the layers written")
+        self._method_and_air()
         if self.atmosphere.source == "none":
             wanted = [name for name in self.layers.write if name not in ("brightness_temperature", "quality")]
             if wanted:
@@ -160,6 +161,24 @@ class Job(Document):
                     f"{', '.join(wanted)}: set layers.write, or name an atmosphere"
                 )
         return self
+
+    def _method_and_air(self) -> None:
+        """The water-vapour method wants a column, and nothing else does."""
+        if self.temperature.method == "water-vapour" and self.atmosphere.source not in ("column", "none"):
+            raise ValueError(
+                "temperature.method = 'water-vapour' uses the column water vapour only: "
+                "set atmosphere.source = 'column'"
+            )
+        if self.atmosphere.source != "column":
+            return
+        if self.temperature.method != "water-vapour":
+            raise ValueError(
+                "atmosphere.source = 'column' serves temperature.method = 'water-vapour' only; "
+                "the single-channel method needs transmittance and radiances (source 'model', 'weather', ...)"
+            )
+        unknown = [name for name in self.layers.write if name in ("transmittance", "path_radiance")]
+        if unknown:
+            raise ValueError(f"the water-vapour method does not know {' and '.join(unknown)}: leave them out")
 
 
 def read_job(path: Path) -> Job:

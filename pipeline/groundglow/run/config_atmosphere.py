@@ -258,6 +258,23 @@ class WeatherAtmosphere(SolvedAtmosphere):
         return self
 
 
+class ColumnAtmosphere(Document):
+    """Column water vapour only, for temperature.method = "water-vapour"."""
+
+    source: Literal["column"]
+    column_water_vapour: WaterColumn | None = Field(
+        None, ge=0.0, le=90.0, description="Default: the scene's water_vapour raster or number."
+    )
+    uncertainty: Fraction = Field(0.10, ge=0.0, le=0.8, description="1 sigma of the column, relative.")
+    coefficients: Literal["landsat-5-2003", "landsat-5", "landsat-7", "landsat-8"] | None = Field(
+        None, description="Published coefficients; default: those of the scene's sensor."
+    )
+
+    def gives_sky_flux(self) -> bool:
+        """Never: the method knows no sky."""
+        return False
+
+
 class NoAtmosphere(Document):
     """Brightness temperature only: the air is left as it is."""
 
@@ -269,4 +286,6 @@ class NoAtmosphere(Document):
 
 
 Solved = SoundingAtmosphere | AnalysisAtmosphere | ModelAtmosphere | WeatherAtmosphere
-Atmosphere = Annotated[ExplicitAtmosphere | Solved | NoAtmosphere, Field(discriminator="source")]
+Atmosphere = Annotated[
+    ExplicitAtmosphere | Solved | ColumnAtmosphere | NoAtmosphere, Field(discriminator="source")
+]

@@ -198,7 +198,8 @@ class ClassEmissivitySource:
             ).values
             for row in range(len(self.lookup.numbers))
         ]
-        return EmissivityFields(*averaged, flags=chosen.flags)
+        band, spread, wide, shared, own = averaged
+        return EmissivityFields(band, spread, wide, shared, own, chosen.flags)
 
     def rasters(self) -> tuple[RasterSource, ...]:
         """The class raster."""

@@ -17,6 +17,7 @@ from groundglow.raster.band import RasterSource
 from groundglow.raster.grid import Block
 from groundglow.raster.open import describe_raster
 from groundglow.run.air_source import Air, air_of_job
+from groundglow.run.column_choice import column_account, column_of_job
 from groundglow.run.config import NEEDS_SKY_FLUX, Job
 from groundglow.run.emissivity_choice import emissivity_of_job
 from groundglow.run.ground_size import pixel_in_metres
@@ -76,7 +77,10 @@ class ScenePlan:
         found: list[tuple[str, RasterSource]] = [("thermal", work.thermal)]
         if work.quality is not None:
             found.append(("quality", work.quality.source))
-        for role, source in (("elevation", work.elevation), ("view_zenith_angle", work.view_zenith_angle)):
+        others = [("elevation", work.elevation), ("view_zenith_angle", work.view_zenith_angle)]
+        if work.column is not None:
+            others.append(("water_vapour", work.column.water))
+        for role, source in others:
             if isinstance(source, RasterSource):
                 found.append((role, source))
         if work.emissivity is not None:
@@ -127,7 +131,10 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
     step = _quantisation_step(band, info.dtypes[band.source.band - 1], info.scales[band.source.band - 1])
     causes = len(air.grid.causes) if air is not None else 0
     settings, account = chain_settings(band, job.temperature, weighting, causes, step)
-    emissivity = emissivity_of_job(job.emissivity, scene, band, grid, folder) if air is not None else None
+    column = column_of_job(job.atmosphere, scene)
+    emissivity = None
+    if air is not None or column is not None:
+        emissivity = emissivity_of_job(job.emissivity, scene, band, grid, folder)
     work = SceneWork(
         grid=grid,
         thermal=band.source,
@@ -137,6 +144,7 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         view_zenith_angle=scene.view_zenith_angle,
         emissivity=emissivity,
         air=pack(air.grid) if air is not None else None,
+        column=column,
         settings=settings,
         formats=_formats(job),
         mask=sum(FLAG[name].mask for name in job.quality.mask),
@@ -155,6 +163,8 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         method["emissivity"] = emissivity.describe()
     if air is not None:
         method["atmosphere"] = air.account
+    if column is not None:
+        method["atmosphere"] = column_account(job.atmosphere, column)
     unit: TemperatureUnit = "celsius" if job.layers.celsius else "kelvin"
     blocks = tuple(grid.blocks(job.run.block))
     plan = ScenePlan(scene, band, work, blocks, air, method, unit, job.layers.preview)

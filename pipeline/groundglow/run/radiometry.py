@@ -102,6 +102,7 @@ def chain_settings(
         table=table,
         lowest_radiance=limits[0],
         highest_radiance=limits[1],
+        possible_range=(choice.lowest, choice.highest),
         calibrated_range=(low, high),
         saturation_temperature=sensor.saturation_temperature or math.inf,
         weighting=np.asarray(weighting, dtype=np.float32),

@@ -29,6 +29,7 @@ from groundglow.retrieval.chain import (
     surface_maps,
 )
 from groundglow.retrieval.chain_cloud import near_cloud
+from groundglow.run.column import ColumnAndGround, ColumnWork
 from groundglow.run.emissivity_source import EmissivitySource
 from groundglow.scene.model import QualityRaster
 from groundglow.scene.quality import flags_of_codes
@@ -65,7 +66,9 @@ class SceneWork:
     emissivity : EmissivitySource or None
         None where only brightness temperature is wanted.
     air : AirStack or None
-        Likewise.
+        None without air, and for the water-vapour method.
+    column : ColumnWork or None
+        For the water-vapour method.
     settings : ChainSettings
     formats : mapping of str to LayerFormat
         The layers to write.
@@ -87,6 +90,7 @@ class SceneWork:
     view_zenith_angle: RasterSource | float
     emissivity: EmissivitySource | None
     air: AirStack | None
+    column: ColumnWork | None
     settings: ChainSettings
     formats: Mapping[str, LayerFormat]
     mask: int
@@ -154,14 +158,18 @@ def work_block(work: SceneWork, block: Block) -> BlockResult:
     radiance, flags = radiance_and_flags(work, block)
     names = [name for name in work.formats if name != "quality"]
     maps = {name: np.empty((block.height, block.width), np.float32) for name in names}
-    air = AirAndGround.read(work, block)
+    ground = ground_of(work, block)
     for rows, columns in tiles(block):
         tile_radiance = np.ascontiguousarray(radiance[rows, columns])
         tile_flags = np.ascontiguousarray(flags[rows, columns])
         brightness = brightness_temperature(tile_radiance, tile_flags, work.settings)
         found = {"brightness_temperature": brightness}
-        if air is not None:
-            found |= air.maps(work, rows, columns, tile_radiance, tile_flags, names)
+        if isinstance(ground, AirAndGround):
+            found |= ground.maps(work, rows, columns, tile_radiance, tile_flags, names)
+        elif isinstance(ground, ColumnAndGround):
+            found |= ground.maps(
+                rows, columns, tile_radiance, brightness, flags=tile_flags, settings=work.settings
+            )
         flags[rows, columns] = tile_flags
         for name in names:
             maps[name][rows, columns] = found[name]
@@ -171,8 +179,16 @@ def work_block(work: SceneWork, block: Block) -> BlockResult:
     encoded = {name: encode_block(maps[name], block, work.grid, work.formats[name]) for name in names}
     encoded["quality"] = encode_block(flags, block, work.grid, work.formats["quality"])
     seen = np.isfinite(radiance)
-    wrong = 0 if air is None else np.count_nonzero(seen & ((air.emissivity.flags & _IMPOSSIBLE) != 0))
+    wrong = 0 if ground is None else np.count_nonzero(seen & ((ground.emissivity.flags & _IMPOSSIBLE) != 0))
     return BlockResult(block, encoded, errors, int(np.count_nonzero(seen)), int(wrong))
+
+
+def ground_of(work: SceneWork, block: Block) -> AirAndGround | ColumnAndGround | None:
+    """What the method needs besides radiance; None where only brightness temperature is wanted."""
+    if work.column is not None and work.emissivity is not None:
+        emissivity = work.emissivity.read(work.grid, block)
+        return ColumnAndGround.read(work.column, emissivity, work.grid, block)
+    return AirAndGround.read(work, block)
 
 
 @dataclass(frozen=True)
@@ -278,6 +294,7 @@ def _number_or_pixels(
 
 
 def tiles(block: Block) -> Iterator[tuple[slice, slice]]:
+    """Rows and columns of each tile of a block."""
     for row in range(0, block.height, TILE):
         for column in range(0, block.width, TILE):
             yield (
