@@ -14,9 +14,17 @@ from groundglow import __version__
 from groundglow.layers.geotiff import LayerSummary
 from groundglow.layers.layer_format import codec_versions
 from groundglow.layers.stac import SceneRecord, scene_item, write_item
+from groundglow.layers.stac_assets import FileAsset, file_asset
+from groundglow.layers.styles import write_styles
+from groundglow.run.catalogue import linked
 from groundglow.run.fingerprint import SceneFingerprint
 from groundglow.run.outcome import SceneOutcome
 from groundglow.run.plan import ScenePlan
+
+_QGIS_STYLE = "application/xml"
+_SE_STYLE = "application/vnd.ogc.se+xml"
+# What the preview shows: the first of these that is written.
+_SHOWN = ("surface_temperature", "brightness_temperature", "emitted_flux", "net_longwave_flux")
 
 _LINEAGE = (
     "Sensor counts to spectral radiance; Planck inversion through the band's spectral response; emissivity; "
@@ -58,8 +66,9 @@ def write_companions(
     OutputError
         If a file cannot be written.
     """
-    item = scene_item(_record(plan, outcome, fingerprint), list(summaries.values()))
-    write_item(folder / item_name(plan.name), item, durable=durable)
+    files = _styles(plan, summaries) + _preview(plan, folder, summaries)
+    item = scene_item(_record(plan, outcome, fingerprint), list(summaries.values()), files)
+    write_item(folder / item_name(plan.name), linked(item), durable=durable)
 
 
 def software() -> dict[str, str]:
@@ -71,6 +80,33 @@ def software() -> dict[str, str]:
         **{name: version(name) for name in ("rasterio", "numpy", "numba")},
         **codec_versions(),
     }
+
+
+def _styles(plan: ScenePlan, summaries: Mapping[str, LayerSummary]) -> list[FileAsset]:
+    """The two style files of each layer."""
+    found = []
+    for name, summary in summaries.items():
+        qgis, map_server = write_styles(summary, plan.temperature_unit)
+        title = f"Style of {name}"
+        found.append(file_asset(qgis, f"{name}_qgis_style", f"{title}, for QGIS", _QGIS_STYLE, ("style",)))
+        found.append(
+            file_asset(map_server, f"{name}_map_server_style", f"{title}, SE 1.1", _SE_STYLE, ("style",))
+        )
+    return found
+
+
+def _preview(plan: ScenePlan, folder: Path, summaries: Mapping[str, LayerSummary]) -> list[FileAsset]:
+    """A picture of the first layer that shows temperature or flux."""
+    shown = next((summaries[name] for name in _SHOWN if name in summaries), None)
+    if not plan.preview or shown is None:
+        return []
+    from groundglow.layers.preview import PreviewText, write_preview  # noqa: PLC0415  (loads Pillow)
+
+    text = PreviewText(title=plan.name, acquired=plan.scene.acquired)
+    picture = write_preview(folder / "preview.png", shown, plan.work.grid, text, plan.temperature_unit)
+    return [
+        file_asset(picture, "preview", f"Picture of {shown.name}", "image/png", ("overview", "thumbnail"))
+    ]
 
 
 def _record(plan: ScenePlan, outcome: SceneOutcome, fingerprint: SceneFingerprint) -> SceneRecord:
