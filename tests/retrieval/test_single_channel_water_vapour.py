@@ -132,6 +132,16 @@ def test_no_value_and_impossible_values_give_no_value(
     found = invert_with_water_vapour(radiance, bright, emissivity, 10.0, coefficients("landsat-8"))
     for name in ("temperature", "per_radiance", "per_emissivity", "per_water_vapour"):
         assert np.isnan(getattr(found, name))
+    missing = bool(np.isnan([radiance, bright, emissivity]).any())
+    assert bool(found.impossible) == (not missing)
+
+
+def test_a_temperature_that_no_ground_has_is_impossible() -> None:
+    found = solved(9.0, 0.04, 10.0)
+    assert np.isnan(found.temperature)
+    assert bool(found.impossible)
+    assert not bool(solved(9.0, 0.97, 10.0).impossible)
+    assert not bool(solved(9.0, 0.97, 31.0).impossible)
 
 
 @pytest.mark.parametrize("name", sorted(COEFFICIENTS))
@@ -159,6 +169,8 @@ def test_the_compiled_form_equals_the_statement(name: str) -> None:
         np.testing.assert_allclose(result, getattr(stated, attribute), rtol=1e-6, atol=1e-6, equal_nan=True)
     bit = FLAG["atmosphere_outside_validity"].mask
     assert ((flags & bit > 0) == stated.outside_validity).all()
+    assert ((flags & FLAG["impossible"].mask > 0) == stated.impossible).all()
+    assert 0 < np.count_nonzero(stated.impossible) < stated.impossible.size // 2
     assert (flags & FLAG["water"].mask > 0).all()
 
 

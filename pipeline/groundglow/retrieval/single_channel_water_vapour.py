@@ -21,6 +21,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from groundglow.errors import ConfigError
 from groundglow.kernels import kernel
+from groundglow.physics.band_table import HIGHEST_TEMPERATURE, LOWEST_TEMPERATURE
 from groundglow.quantities import FLAG
 
 Float = NDArray[np.float64]
@@ -35,6 +36,7 @@ REFUSED_WATER_VAPOUR = 30.0
 # Standard uncertainty of the form itself within its range, from the published comparison. [K]
 METHOD_UNCERTAINTY = 1.0
 
+_IMPOSSIBLE = np.uint16(FLAG["impossible"].mask)
 _OUTSIDE = np.uint16(FLAG["atmosphere_outside_validity"].mask)
 _NAN = np.float32(np.nan)
 
@@ -118,6 +120,9 @@ class WaterVapourInversion:
         [K per kg m-2]
     outside_validity : bool array
         True where the water vapour is below 0.5 or above 2 g cm-2.
+    impossible : bool array
+        True where all inputs are numbers and the water vapour may be used, and still no temperature between
+        150 K and 1,500 K follows.
     """
 
     temperature: Float
@@ -125,6 +130,7 @@ class WaterVapourInversion:
     per_emissivity: Float
     per_water_vapour: Float
     outside_validity: NDArray[np.bool_]
+    impossible: NDArray[np.bool_]
 
 
 def coefficients(name: str) -> WaterVapourCoefficients:
@@ -220,7 +226,11 @@ def invert_with_water_vapour(
     bracket = (first * level + second) / eps + third
     w = 0.1 * water
     growth = [2.0 * a * w + b for a, b, _ in (fit.first, fit.second, fit.third)]
-    known = np.isfinite(gamma * bracket + delta)
+    found = gamma * bracket + delta
+    known = (found >= LOWEST_TEMPERATURE) & (found <= HIGHEST_TEMPERATURE)
+    usable = (water >= 0.0) & (water <= REFUSED_WATER_VAPOUR)
+    for given in (radiance, brightness_temperature, emissivity):
+        usable = usable & ~np.isnan(np.asarray(given, dtype=np.float64))
     per_radiance = (
         gamma * first / eps
         + bracket * gamma * (2.0 * gamma / bright - 1.0 / level)
@@ -228,11 +238,12 @@ def invert_with_water_vapour(
     )
     per_water = 0.1 * gamma * ((growth[0] * level + growth[1]) / eps + growth[2])
     return WaterVapourInversion(
-        temperature=np.where(known, gamma * bracket + delta, np.nan),
+        temperature=np.where(known, found, np.nan),
         per_radiance=np.where(known, per_radiance, np.nan),
         per_emissivity=np.where(known, -gamma * (first * level + second) / (eps * eps), np.nan),
         per_water_vapour=np.where(known, per_water, np.nan),
         outside_validity=(water < LEAST_WATER_VAPOUR) | (water > GREATEST_WATER_VAPOUR),
+        impossible=usable & ~known,
     )
 
 
@@ -254,8 +265,8 @@ def invert_tile_with_water_vapour(
 ) -> None:
     """The compiled form of :func:`invert_with_water_vapour` on one tile.
 
-    The four results are written, and ``flags`` gains "atmosphere outside validity"; ``packed`` is
-    :meth:`WaterVapourCoefficients.packed`.
+    The four results are written, and ``flags`` gains "atmosphere outside validity" and "impossible";
+    ``packed`` is :meth:`WaterVapourCoefficients.packed`.
     """
     a1, b1, c1, a2, b2, c2, a3, b3, c3, planck = packed
     for i in range(radiance.shape[0]):
@@ -266,14 +277,16 @@ def invert_tile_with_water_vapour(
             water = np.float64(column_water_vapour[i, j])
             if water < LEAST_WATER_VAPOUR or water > GREATEST_WATER_VAPOUR:
                 flags[i, j] |= _OUTSIDE
-            known = (
-                level > 0.0 and eps > 0.0 and eps <= 1.0 and water >= 0.0 and water <= REFUSED_WATER_VAPOUR
-            )
-            if not (known and bright > 0.0):
-                temperature[i, j] = _NAN
-                per_radiance[i, j] = _NAN
-                per_emissivity[i, j] = _NAN
-                per_water_vapour[i, j] = _NAN
+            temperature[i, j] = _NAN
+            per_radiance[i, j] = _NAN
+            per_emissivity[i, j] = _NAN
+            per_water_vapour[i, j] = _NAN
+            if np.isnan(level) or np.isnan(bright) or np.isnan(eps):
+                continue
+            if not (water >= 0.0 and water <= REFUSED_WATER_VAPOUR):
+                continue
+            if not (level > 0.0 and eps > 0.0 and eps <= 1.0):
+                flags[i, j] |= _IMPOSSIBLE
                 continue
             w = 0.1 * water
             first = (a1 * w + b1) * w + c1
@@ -281,7 +294,11 @@ def invert_tile_with_water_vapour(
             gamma = bright * bright / (planck * level)
             ground = (first * level + second) / eps
             bracket = ground + ((a3 * w + b3) * w + c3)
-            temperature[i, j] = gamma * bracket + (bright - bright * bright / planck)
+            found = gamma * bracket + (bright - bright * bright / planck)
+            if not (found >= LOWEST_TEMPERATURE and found <= HIGHEST_TEMPERATURE):
+                flags[i, j] |= _IMPOSSIBLE
+                continue
+            temperature[i, j] = found
             per_radiance[i, j] = (
                 gamma * first / eps
                 + bracket * gamma * (2.0 * gamma / bright - 1.0 / level)
