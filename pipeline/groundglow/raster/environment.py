@@ -17,7 +17,10 @@ _OPTIONS = {
     "GDAL_DISABLE_READDIR_ON_OPEN": "TRUE",
     "GDAL_HTTP_MAX_RETRY": "3",
     "GDAL_HTTP_RETRY_DELAY": "1",
-    "CPL_VSIL_CURL_USE_HEAD": "NO",
+    # A server that stalls must not hold a night's run: give up on silence, not on slowness.
+    "GDAL_HTTP_CONNECTTIMEOUT": "20",
+    "GDAL_HTTP_LOW_SPEED_TIME": "30",
+    "GDAL_HTTP_LOW_SPEED_LIMIT": "1",
 }
 
 
