@@ -20,6 +20,7 @@ from groundglow.retrieval.emissivity_class_table import class_table_from_toml, s
 from groundglow.retrieval.emissivity_hemispheric import (
     ELSEWHERE,
     HEMISPHERIC_STEPS,
+    WATER_REFRACTIVE_INDEX,
     fresnel_emissivity,
     hemispheric_emissivity,
     hemispheric_step,
@@ -229,6 +230,20 @@ def test_flat_water_emits_near_nadir_what_is_published() -> None:
     # (from memory).
     assert 0.985 < fresnel_emissivity(1.153, 0.0968, 0.0) < 0.9935
     assert 0.98 < fresnel_emissivity(1.277, 0.0361, 0.0) < 0.99
+
+
+def test_the_refractive_index_of_water_runs_smoothly_through_the_window() -> None:
+    # Source: Hale and Querry (1973): the real part falls to its least near 12 um, the imaginary part rises
+    # throughout (from memory). A slip of a digit would break the run.
+    wavelength, real, imaginary = WATER_REFRACTIVE_INDEX.T
+    assert np.diff(wavelength) == pytest.approx(0.5)
+    assert (np.diff(real)[wavelength[1:] <= 12.0] < 0.0).all()
+    assert (np.diff(real)[wavelength[:-1] >= 12.0] > 0.0).all()
+    assert (np.diff(imaginary) > 0.0).all()
+    assert np.abs(np.diff(real, 2)).max() < 0.03
+    nadir = fresnel_emissivity(real, imaginary, 0.0)
+    assert nadir.min() > 0.965
+    assert nadir.max() < 0.994
 
 
 def test_water_emits_less_at_grazing_angles() -> None:
