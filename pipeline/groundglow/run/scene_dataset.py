@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from groundglow.errors import InputError
 from groundglow.layers.encode import encode_block
+from groundglow.layers.files import output_errors
 from groundglow.layers.geotiff import LayerSummary, LayerWriter
 from groundglow.layers.layer_format import format_of
 from groundglow.layers.tags import text_of
@@ -118,7 +119,8 @@ def write_layers(
     schema.require_variables(dataset, chosen)
     grid = grid_of(dataset)
     folder = Path(folder)
-    folder.mkdir(parents=True, exist_ok=True)
+    with output_errors(folder):
+        folder.mkdir(parents=True, exist_ok=True)
     found = {}
     with gdal_environment():
         formats = {name: format_of(name, compression, level) for name in chosen}

@@ -17,7 +17,7 @@ from groundglow.retrieval.chain import EmissivityFields
 from groundglow.run.plan import ScenePlan
 from groundglow.run.stage_output import StageBlock, encoded, make_rasters
 from groundglow.run.stage_radiance import checksums
-from groundglow.run.stage_record import StageFolder, StageRecord, record_of
+from groundglow.run.stage_record import StageFile, StageFolder, StageRecord, record_of
 from groundglow.run.stage_setting import Setting, StageCall
 
 # Each variable of the stage, and the field of the chain that it holds.
@@ -48,16 +48,16 @@ def make_emissivity(call: StageCall) -> StageRecord:
     tally = _Tally(plan.work.grid.height * plan.work.grid.width)
     inputs = checksums([("emissivity", raster) for raster in source.rasters()])
 
-    def record(files: dict[str, object]) -> StageRecord:
+    def record(files: dict[str, StageFile]) -> StageRecord:
         tally.refuse_if_mostly_impossible(source.rasters())
-        return record_of(plan, "emissivity", files, inputs, source.describe())  # type: ignore[arg-type]
+        return record_of(plan, "emissivity", files, inputs, source.describe())
 
     return make_rasters(
         call.output,
         plan.work.grid,
         (*VARIABLES, "quality"),
         partial(_emissivity_block, plan, tally),
-        record,  # type: ignore[arg-type]
+        record,
         workers=call.workers,
     )
 
