@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 Pixels = NDArray[np.float32]
 Mask = NDArray[np.bool_]
+Convert = Callable[[Pixels], Pixels]
 
 
 @dataclass(frozen=True)
@@ -33,6 +34,9 @@ class RasterSource:
         Physical value = scale * stored + offset; None takes what the file itself says, else 1 and 0.
     shift : float
         Added to the physical value, for example 273.15 where the file says degrees Celsius.
+    convert : callable or None
+        Applied to physical values pixel by pixel, float32 in and out, before anything is averaged. A
+        small value object, so that the source can be compared and pickled.
     saturation : float or None
         Stored value from which on the band is saturated.
     indirect : bool
@@ -46,6 +50,7 @@ class RasterSource:
     scale: float | None = None
     offset: float | None = None
     shift: float = 0.0
+    convert: Convert | None = None
     saturation: float | None = None
     indirect: bool = False
 
@@ -87,6 +92,3 @@ class CodeRead:
     codes: NDArray[np.integer]
     valid: Mask
     mixed: Mask | None
-
-
-Convert = Callable[[Pixels], Pixels]

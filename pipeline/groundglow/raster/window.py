@@ -49,6 +49,8 @@ def read_values(source: RasterSource, window: Window) -> tuple[Pixels, Mask | No
     if hidden is not None:
         values[hidden] = np.nan
         saturated &= ~hidden
+    if source.convert is not None:
+        values = source.convert(values)
     return values, None if source.saturation is None else saturated
 
 

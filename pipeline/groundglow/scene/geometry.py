@@ -3,6 +3,10 @@
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
 
 from groundglow.errors import DomainError
 
@@ -42,3 +46,24 @@ def zenith_at_surface(off_nadir: float, height: float) -> float:
             f"from {height:g} m the line of sight at {off_nadir:g} degrees off nadir misses the Earth"
         )
     return math.degrees(math.asin(sine))
+
+
+@dataclass(frozen=True)
+class ZenithAtSurface:
+    """Pixels of angles off nadir at the sensor become view zenith angles at the surface.
+
+    Attributes
+    ----------
+    height : float
+        Height of the sensor above the ground. [m]
+    """
+
+    height: float
+
+    def __call__(self, off_nadir: NDArray[np.float32]) -> NDArray[np.float32]:
+        """As :func:`zenith_at_surface`; the sign is dropped, NaN where the line of sight misses the Earth. [deg]"""
+        angle = np.radians(np.abs(off_nadir).astype(np.float64))
+        sine = (1.0 + self.height / EARTH_RADIUS) * np.sin(angle)
+        with np.errstate(invalid="ignore"):
+            zenith = np.degrees(np.arcsin(np.where(angle < 0.5 * np.pi, sine, np.nan)))
+        return zenith.astype(np.float32)

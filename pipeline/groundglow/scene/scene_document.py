@@ -193,6 +193,15 @@ class AcquisitionDocument(Document):
         0.0,
         description="Angle of the line of sight from the vertical, at the surface: number or raster. [deg]",
     )
+    off_nadir_angle: AngleField | None = Field(
+        None,
+        description="In place of view_zenith_angle: angle from the vertical at the sensor, number or raster. [deg]",
+    )
+    flight_height: float | None = Field(
+        None,
+        gt=0.0,
+        description="Height of the sensor above the ground, for off_nadir_angle; default: the sensor's. [m]",
+    )
     sun_elevation: SunElevation | None = Field(None, description="[deg]")
     elevation: HeightField | None = Field(
         None, description="Ground height above sea level: number or raster. [m]"
@@ -206,6 +215,14 @@ class AcquisitionDocument(Document):
     @classmethod
     def _time(cls, value: object) -> object:
         return checked_time(value)
+
+    @model_validator(mode="after")
+    def _one_angle(self) -> AcquisitionDocument:
+        if self.off_nadir_angle is not None and "view_zenith_angle" in self.model_fields_set:
+            raise ValueError(
+                "view_zenith_angle and off_nadir_angle say the same thing twice: keep one of them"
+            )
+        return self
 
 
 class SceneDocument(Document):

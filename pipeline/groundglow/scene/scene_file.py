@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 from groundglow.documents import checked, read_toml
-from groundglow.errors import ConfigError
+from groundglow.errors import ConfigError, DomainError
 from groundglow.raster.band import RasterSource
 from groundglow.raster.open import is_local
+from groundglow.scene.geometry import ZenithAtSurface, zenith_at_surface
 from groundglow.scene.model import (
     CameraSettings,
     EmissivityRaster,
@@ -19,6 +21,7 @@ from groundglow.scene.model import (
 )
 from groundglow.scene.radiometer import Sensor, TwoConstants
 from groundglow.scene.scene_document import (
+    AcquisitionDocument,
     QualityDocument,
     RasterDocument,
     ReflectanceDocument,
@@ -77,7 +80,7 @@ def _scene(document: SceneDocument, path: Path) -> Scene:
         acquired=head.acquired,
         sensor=sensor,
         thermal=tuple(_thermal(band, sensor, folder) for band in document.thermal),
-        view_zenith_angle=_field(head.view_zenith_angle, folder) or 0.0,
+        view_zenith_angle=_view(head, sensor, folder),
         sun_elevation=head.sun_elevation,
         elevation=_field(head.elevation, folder),
         land_cover=_source(head.land_cover, folder) if head.land_cover else None,
@@ -108,6 +111,24 @@ def _source(document: RasterDocument, folder: Path) -> RasterSource:
 def _field(document: RasterDocument | float | None, folder: Path) -> RasterSource | float | None:
     """A number or a raster."""
     return _source(document, folder) if isinstance(document, RasterDocument) else document
+
+
+def _view(head: AcquisitionDocument, sensor: Sensor, folder: Path) -> RasterSource | float:
+    """The view zenith angle at the surface, from whichever angle is given."""
+    if head.off_nadir_angle is None:
+        return _field(head.view_zenith_angle, folder) or 0.0
+    height = head.flight_height or sensor.flight_height
+    if height is None:
+        raise ConfigError(
+            "key 'scene.flight_height' is missing: it turns off_nadir_angle into an angle at the surface, and the "
+            f"sensor {sensor.name} has no usual height"
+        )
+    if isinstance(head.off_nadir_angle, RasterDocument):
+        return replace(_source(head.off_nadir_angle, folder), convert=ZenithAtSurface(height))
+    try:
+        return zenith_at_surface(head.off_nadir_angle, height)
+    except DomainError as error:
+        raise ConfigError(error.what, where="scene.off_nadir_angle") from error
 
 
 def _thermal(document: ThermalDocument, sensor: Sensor, folder: Path) -> ThermalBand:
