@@ -6,10 +6,12 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from numpy.typing import ArrayLike, NDArray
 
 from groundglow.errors import DomainError
 from groundglow.physics.band_table import (
     BandTable,
+    radiance_table,
     table_from_response,
     table_from_two_constants,
     temperature_of_band_radiance,
@@ -92,3 +94,41 @@ def test_the_cells_follow_one_another_without_gaps() -> None:
 def test_constants_that_are_none_are_refused(k1: float, k2: float) -> None:
     with pytest.raises(DomainError, match="positive numbers"):
         table_from_two_constants(k1, k2)
+
+
+@pytest.mark.parametrize("name", sorted(RESPONSES))
+def test_the_way_there_is_good_to_half_a_millikelvin(name: str) -> None:
+    # From kelvin to radiance against direct integration, halfway between the table's steps of 0.1 K.
+    response, there = RESPONSES[name], radiance_table(RESPONSES[name].band_radiance)
+    temperature = np.arange(180.05, 1300.0, 7.3)
+    error = there(temperature) - response.band_radiance(temperature)
+    # A float32 holds seven digits: at 1,300 K that alone is 0.1 mK.
+    assert np.abs(error / response.band_radiance_slope(temperature)).max() < 5e-4
+
+
+@pytest.mark.parametrize("name", sorted(RESPONSES))
+def test_there_and_back_returns_home_within_a_millikelvin(name: str) -> None:
+    temperature = np.linspace(181.0, 1299.0, 2003)
+    there = radiance_table(RESPONSES[name].band_radiance)(temperature)
+    back = temperature_of_band_radiance(there, TABLES[name]).astype(np.float64)
+    assert np.abs(back - temperature).max() < 1e-3
+
+
+def test_the_way_there_has_no_value_outside_its_range() -> None:
+    there = radiance_table(RESPONSES["narrow"].band_radiance)
+    found = there(np.array([[np.nan, 149.9, 150.0], [300.0, 1500.0, 1500.1]]))
+    assert found.dtype == np.float32
+    assert np.isnan(found).tolist() == [[True, True, False], [False, False, True]]
+
+
+def test_a_finely_sampled_response_is_integrated_at_few_temperatures() -> None:
+    # A scheduled run makes these tables anew each time: integrating at each of thousands of cells took a
+    # second.
+    calls = []
+
+    def counted(temperature: ArrayLike) -> NDArray[np.float64]:
+        calls.append(np.size(temperature))
+        return RESPONSES["gaussian"].band_radiance(temperature)
+
+    radiance_table(counted)
+    assert sum(calls) < 100

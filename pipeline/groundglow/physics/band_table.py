@@ -12,6 +12,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.polynomial import Chebyshev
 from numpy.typing import ArrayLike, NDArray
 
 from groundglow.errors import DomainError
@@ -24,6 +25,8 @@ LOWEST_TEMPERATURE = 150.0  # K
 HIGHEST_TEMPERATURE = 1500.0  # K
 # A float32 has 23 mantissa bits; the top 8 choose the cell within an octave.
 CELL_SHIFT = 15
+# Of the polynomial that stands for a band's law while a table is made.
+_DEGREE = 40
 
 
 @dataclass(frozen=True)
@@ -54,7 +57,7 @@ class BandTable:
 
 def table_from_response(response: SpectralResponse) -> BandTable:
     """Table of the band radiance integrated over a spectral response."""
-    return _table(response.band_radiance, response.band_radiance_slope)
+    return _table(response.band_radiance)
 
 
 def table_from_two_constants(k1: float, k2: float) -> BandTable:
@@ -71,12 +74,7 @@ def table_from_two_constants(k1: float, k2: float) -> BandTable:
     def radiance(temperature: ArrayLike) -> Float:
         return two_constant_radiance(temperature, k1, k2)
 
-    def slope(temperature: ArrayLike) -> Float:
-        t = np.asarray(temperature, dtype=np.float64)
-        level = radiance(t)
-        return np.asarray(k2 / t**2 * level * (1.0 + level / k1))
-
-    return _table(radiance, slope)
+    return _table(radiance)
 
 
 def temperature_of_band_radiance(radiance: ArrayLike, table: BandTable) -> Float:
@@ -101,14 +99,14 @@ def temperature_of_band_radiance(radiance: ArrayLike, table: BandTable) -> Float
     return np.where(known, found, np.float32(np.nan))
 
 
-def _table(radiance: Callable[[ArrayLike], Float], slope: Callable[[ArrayLike], Float]) -> BandTable:
+def _table(radiance: Callable[[ArrayLike], Float]) -> BandTable:
     lowest, highest = (float(radiance(t)) for t in (LOWEST_TEMPERATURE, HIGHEST_TEMPERATURE))
     keys = np.array([lowest, highest], dtype=np.float32).view(np.int32) >> CELL_SHIFT
     edges_bits = np.arange(keys[0], keys[1] + 2, dtype=np.int32) << CELL_SHIFT
     edges = edges_bits.view(np.float32).astype(np.float64)
     # Slopes between the rounded temperatures: a cell then never ends above the start of the next, and
     # more radiance never maps colder by a rounding step.
-    temperature = _invert(edges, radiance, slope).astype(np.float32)
+    temperature = _invert(edges, _law(radiance)).astype(np.float32)
     return BandTable(
         first_key=int(keys[0]),
         start=edges[:-1].astype(np.float32),
@@ -119,18 +117,25 @@ def _table(radiance: Callable[[ArrayLike], Float], slope: Callable[[ArrayLike], 
     )
 
 
-def _invert(
-    target: Float, radiance: Callable[[ArrayLike], Float], slope: Callable[[ArrayLike], Float]
-) -> Float:
-    """Newton's method on ln L over 1/T, where a blackbody's law is nearly straight."""
-    grid = 1.0 / np.linspace(1.0 / (0.9 * LOWEST_TEMPERATURE), 1.0 / (1.1 * HIGHEST_TEMPERATURE), 400)
-    inverse = np.interp(np.log(target), np.log(radiance(grid)), 1.0 / grid)
+def _law(radiance: Callable[[ArrayLike], Float]) -> Chebyshev:
+    """Logarithm of the radiance over 1/T, where a blackbody's law is nearly straight, good to 1e-11.
+
+    Integrating a finely sampled response at each cell of a table would take a second; integrating it
+    at forty temperatures takes a hundredth of one.
+    """
+    ends = [1.0 / (1.1 * HIGHEST_TEMPERATURE), 1.0 / (0.9 * LOWEST_TEMPERATURE)]
+    return Chebyshev.interpolate(lambda inverse: np.log(radiance(1.0 / inverse)), _DEGREE, domain=ends)
+
+
+def _invert(target: Float, law: Chebyshev) -> Float:
+    """Newton's method on ln L over 1/T."""
+    slope = law.deriv()
+    grid = np.linspace(law.domain[1], law.domain[0], 400)
+    wanted = np.log(target)
+    inverse = np.interp(wanted, law(grid), grid)
     for _ in range(4):
-        t = 1.0 / inverse
-        level = radiance(t)
-        # d ln L / d(1/T) = -T^2 L'/L
-        inverse = inverse + np.log(target / level) / (-(t**2) * slope(t) / level)
-    return 1.0 / inverse
+        inverse = inverse - (law(inverse) - wanted) / slope(inverse)
+    return np.asarray(1.0 / inverse)
 
 
 @dataclass(frozen=True)
@@ -164,4 +169,4 @@ def radiance_table(radiance: Callable[[ArrayLike], Float]) -> RadianceTable:
     """Table in steps of 0.1 K of a band's law, for example ``response.band_radiance``."""
     count = round((HIGHEST_TEMPERATURE - LOWEST_TEMPERATURE) / 0.1) + 1
     temperature = np.linspace(LOWEST_TEMPERATURE, HIGHEST_TEMPERATURE, count)
-    return RadianceTable(temperature, radiance(temperature))
+    return RadianceTable(temperature, np.exp(_law(radiance)(1.0 / temperature)))
