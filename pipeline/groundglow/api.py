@@ -30,7 +30,7 @@ from groundglow.stages.flux import flux
 from groundglow.stages.layers import layers
 from groundglow.stages.radiance import Calibration, radiance
 from groundglow.stages.schema import require
-from groundglow.stages.surface_temperature import surface_temperature
+from groundglow.stages.surface_temperature import surface_temperature, surface_temperature_from_column
 
 __all__ = [
     "Calibration",
@@ -47,6 +47,7 @@ __all__ = [
     "require",
     "run_chain",
     "surface_temperature",
+    "surface_temperature_from_column",
     "write_layers",
 ]
 
@@ -105,12 +106,14 @@ def run_chain(dataset: xr.Dataset, plan: ScenePlan) -> xr.Dataset:
     """
     work = plan.work
     found = brightness_temperature(dataset, work.settings)
-    if work.air is not None and work.emissivity is not None:
+    if work.emissivity is not None:
         found = emissivity(found, work.emissivity)
+    if work.column is not None:
+        found = flux(surface_temperature_from_column(found, work.settings, work.column.settings))
+    elif work.air is not None:
         account = plan.air.account if plan.air is not None else {}
         found = atmosphere(found, work.air, work.settings.weighting, origin=str(account.get("source", "")))
-        found = surface_temperature(found, work.settings)
-        found = flux(found)
+        found = flux(surface_temperature(found, work.settings))
     return layers(found, list(work.formats), mask_names(plan))
 
 

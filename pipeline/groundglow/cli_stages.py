@@ -45,7 +45,7 @@ def _folder(stage: str) -> typer.models.OptionInfo:
 RadianceFolder = Annotated[Path, _folder("radiance")]
 BrightnessFolder = Annotated[Path, _folder("brightness-temperature")]
 EmissivityFolder = Annotated[Path, _folder("emissivity")]
-AtmosphereFolder = Annotated[Path, _folder("atmosphere")]
+AtmosphereFolder = Annotated[Path | None, _folder("atmosphere")]
 TemperatureFolder = Annotated[Path, _folder("surface-temperature")]
 
 
@@ -146,16 +146,17 @@ def surface_temperature(
     radiance: RadianceFolder,
     brightness: BrightnessFolder,
     emissivity: EmissivityFolder,
-    atmosphere: AtmosphereFolder,
     output: Output,
+    atmosphere: AtmosphereFolder = None,
     workers: Workers = None,
     quiet: Quiet = False,
     as_json: Json = False,
 ) -> None:
-    """Surface temperature [K] by inverting the radiative transfer equation, and its standard uncertainty.
+    """Surface temperature [K] by the job's method, and its standard uncertainty.
 
-    Reads JOB, SCENE (with elevation and view angle, where the air depends on them) and four stages; of the
-    brightness temperature only its flags. Writes surface_temperature.tif, its uncertainty and the parts of it,
+    Reads JOB, SCENE (with elevation and view angle, where the air depends on them) and the stages given. The
+    single-channel method needs --atmosphere; the water-vapour method reads the column from the job or SCENE
+    instead. Writes surface_temperature.tif, its uncertainty and the parts of it,
     transmittance.tif, path_radiance.tif, sky_flux.tif (where known), quality.tif and stage.json.
     """
     from groundglow.run import stage_commands as stages  # noqa: PLC0415  (as above)

@@ -52,6 +52,10 @@ class ColumnAndGround:
             water = np.broadcast_to(np.float32(column.water), (block.height, block.width))
         return ColumnAndGround(emissivity, water, column.settings)
 
+    def water_of(self, rows: slice, columns: slice) -> Pixels:
+        """The water vapour of one tile, contiguous and writable as kernels want it. [kg m-2]"""
+        return np.require(self.water[rows, columns], requirements=["C", "W"])
+
     def maps(
         self,
         rows: slice,
@@ -65,7 +69,7 @@ class ColumnAndGround:
         """The maps of one tile; ``flags`` gains what the method finds."""
         emissivity = self.emissivity.window(rows, columns)
         flags |= emissivity.flags
-        water = np.ascontiguousarray(self.water[rows, columns])
+        water = self.water_of(rows, columns)
         flags[np.isnan(water)] |= _OUTSIDE_VALIDITY
         found = invert_with_column(
             radiance, brightness, flags, emissivity, water, settings=settings, method=self.method

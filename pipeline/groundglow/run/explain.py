@@ -27,8 +27,10 @@ from groundglow.raster.open import open_raster
 from groundglow.raster.relation import OnLattice, relation
 from groundglow.raster.source import read_block, source_grid
 from groundglow.retrieval import chain
+from groundglow.run.column import ColumnAndGround
+from groundglow.run.explain_causes import Causes, causes_with_air, causes_with_column
 from groundglow.run.plan import ScenePlan
-from groundglow.run.worker import AirAndGround, SceneWork, radiance_and_flags
+from groundglow.run.worker import AirAndGround, SceneWork, ground_of, radiance_and_flags
 
 Pixels = NDArray[np.float32]
 Numbers = Mapping[str, float | None]
@@ -105,11 +107,17 @@ def explain_pixel(plan: ScenePlan, row: int, column: int, name: str = "") -> Sto
             "radiance": _number(radiance),
             "brightness_temperature": _number(maps["brightness_temperature"]),
         }
-        ground = AirAndGround.read(work, block)
+        ground = ground_of(work, block)
         surface = _Surface({}, {}, {})
-        if ground is not None:
+        if isinstance(ground, AirAndGround):
             maps |= ground.maps(work, _ONE, _ONE, radiance, flags, list(QUANTITIES))
-            surface = _surface(plan, ground, radiance, maps, block)
+            causes = causes_with_air(work, ground, radiance)
+            surface = _surface(ground, maps, causes, _air_numbers(plan, ground, block))
+        elif isinstance(ground, ColumnAndGround):
+            brightness = maps["brightness_temperature"]
+            maps |= ground.maps(_ONE, _ONE, radiance, brightness, flags=flags, settings=work.settings)
+            causes = causes_with_column(work, ground, radiance, brightness)
+            surface = _surface(ground, maps, causes, {"column_water_vapour": _number(ground.water)})
     x, y = pixel_centre(work.grid, row, column)
     value = int(flags[0, 0])
     return Story(
@@ -121,7 +129,7 @@ def explain_pixel(plan: ScenePlan, row: int, column: int, name: str = "") -> Sto
         column=column,
         steps={"sensor": sensor, **surface.steps},
         emissivity_origin={} if work.emissivity is None else work.emissivity.describe(),
-        atmosphere_origin={} if plan.air is None else plan.air.account,
+        atmosphere_origin=_mapping(plan.method.get("atmosphere")),
         temperature_uncertainty=surface.temperature,
         flux_uncertainty=surface.flux,
         flags=tuple(flag.name for flag in FLAGS if value & flag.mask),
@@ -147,39 +155,38 @@ class _Surface:
 
 
 def _surface(
-    plan: ScenePlan, ground: AirAndGround, radiance: Pixels, maps: Mapping[str, Pixels], block: Block
+    ground: AirAndGround | ColumnAndGround, maps: Mapping[str, Pixels], causes: Causes, air: Numbers
 ) -> _Surface:
     fields = ground.emissivity.window(_ONE, _ONE)
-    air = ground.air(_ONE, _ONE)
-    causes = _causes(plan.work, radiance, fields, air)
-    temperature = {
-        "noise": causes.noise,
-        "calibration": causes.calibration,
-        "emissivity": abs(causes.emissivity),
-    }
-    temperature |= causes.air
     steps: dict[str, Numbers] = {
         "emissivity": {
             "emissivity": _number(fields.band),
             "emissivity_uncertainty": _number(fields.band_uncertainty),
             "broadband_emissivity": _number(fields.broadband),
         },
-        "atmosphere": _air_numbers(plan, ground, air, block),
+        "atmosphere": air,
         "surface": {
             name: _number(maps[name])
             for name in ("surface_temperature", "emitted_flux", "leaving_flux", "net_longwave_flux")
+            if name in maps
         },
+    }
+    temperature = {
+        "noise": causes.noise,
+        "calibration": causes.calibration,
+        "emissivity": abs(causes.emissivity),
     }
     return _Surface(
         steps,
-        _with_total(temperature, _number(maps["surface_temperature_uncertainty"])),
+        _with_total(temperature | dict(causes.air), _number(maps["surface_temperature_uncertainty"])),
         _with_total(_flux_causes(causes, fields, maps), _number(maps["emitted_flux_uncertainty"])),
     )
 
 
-def _air_numbers(plan: ScenePlan, ground: AirAndGround, air: Pixels, block: Block) -> Numbers:
+def _air_numbers(plan: ScenePlan, ground: AirAndGround, block: Block) -> Numbers:
     """The air's terms at the pixel, and where in the air's table it lies."""
     work = plan.work
+    air = ground.air(_ONE, _ONE)
     count = work.settings.weighting.size
     sky = None
     if plan.air is not None:
@@ -202,44 +209,8 @@ def _sky_as_path(grid: AtmosphereGrid) -> AtmosphereGrid:
     return replace(grid, terms=replace(grid.terms, path_radiance=sky), causes={})
 
 
-@dataclass(frozen=True)
-class _Causes:
-    """Change of the temperature for one standard uncertainty of each cause. [K]"""
-
-    noise: float
-    calibration: float
-    emissivity: float
-    air: Mapping[str, float]
-
-
-def _causes(work: SceneWork, radiance: Pixels, fields: chain.EmissivityFields, air: Pixels) -> _Causes:
-    """Each cause on its own, through the same inversion as all together."""
-    settings = work.settings
-    size = settings.weighting.size + 3
-
-    def alone(cause: int | None, calibration: float) -> chain.Inversion:
-        parts = [air[:size]] if cause is None else [air[:size], air[(cause + 1) * size : (cause + 2) * size]]
-        return chain.invert(
-            radiance,
-            np.zeros((1, 1), np.uint16),
-            fields.band,
-            fields.band_uncertainty,
-            air=np.ascontiguousarray(np.concatenate(parts)),
-            settings=replace(settings, causes=len(parts) - 1, calibration=calibration),
-        )
-
-    sensor = alone(None, settings.calibration)
-    names = work.air.causes if work.air is not None else ()
-    return _Causes(
-        noise=float(sensor.pixel[0, 0]),
-        calibration=float(sensor.scene[0, 0]),
-        emissivity=float(sensor.surface_class[0, 0]),
-        air={name: float(alone(index, 0.0).scene[0, 0]) for index, name in enumerate(names)},
-    )
-
-
 def _flux_causes(
-    causes: _Causes, fields: chain.EmissivityFields, maps: Mapping[str, Pixels]
+    causes: Causes, fields: chain.EmissivityFields, maps: Mapping[str, Pixels]
 ) -> dict[str, float]:
     """The same for the emitted flux: the emissivity's error moves the temperature and the factor before it."""
     t = float(maps["surface_temperature"][0, 0])
@@ -293,6 +264,10 @@ def _auxiliary(source: RasterSource | float, grid: Grid, block: Block) -> float 
     if not isinstance(source, RasterSource):
         return float(source)
     return _number(read_block(source, grid, block, resampling="continuous").values)
+
+
+def _mapping(value: object) -> Mapping[str, Any]:
+    return value if isinstance(value, Mapping) else {}
 
 
 def _number(values: Pixels) -> float | None:

@@ -73,6 +73,8 @@ def open_scene_dataset(plan: ScenePlan, *, chunks: Chunks = _BLOCK) -> xr.Datase
         "elevation": _auxiliary(work.elevation, "elevation", work, chunks),
         "view_zenith_angle": _auxiliary(work.view_zenith_angle, "view_zenith_angle", work, chunks),
     }
+    if work.column is not None:
+        variables["column_water_vapour"] = _auxiliary(work.column.water, "column_water_vapour", work, chunks)
     return xr.Dataset(variables, coords={**coordinates(grid), **_labels(plan)}, attrs=_attributes(plan))
 
 

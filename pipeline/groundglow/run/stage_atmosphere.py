@@ -19,9 +19,13 @@ from groundglow.atmosphere.grid import AirTerms, AtmosphereGrid
 from groundglow.documents import Document, checked
 from groundglow.errors import ConfigError, DomainError, InputError
 from groundglow.layers.files import write_whole
+from groundglow.raster.band import RasterSource
+from groundglow.raster.fingerprint import fingerprint
+from groundglow.run.air_source import Air
 from groundglow.run.stage_output import stage_folder
 from groundglow.run.stage_record import RECORD, StageFile, StageFolder, StageRecord, record_of
 from groundglow.run.stage_setting import Setting, StageCall
+from groundglow.scene.model import Scene
 
 _FILE = "air.json"
 _TERMS = tuple(AirTerms.__dataclass_fields__)
@@ -48,10 +52,15 @@ _DIMENSIONS = {
 
 
 class AirDocument(Document):
-    """The content of ``air.json``: nested lists, null where a value is not known."""
+    """The content of ``air.json``: nested lists, null where a value is not known.
+
+    ``elevation`` is the ground height that holds for every pixel [m]; null where the scene's raster is to be
+    looked at.
+    """
 
     units: dict[str, str]
     dimensions: dict[str, list[str]]
+    elevation: float | None
     axes: dict[str, list[float]]
     terms: dict[str, list[Any]]
     causes: dict[str, dict[str, list[Any]]]
@@ -71,7 +80,8 @@ def make_atmosphere(call: StageCall) -> StageRecord:
     plan = setting.plan_of_air()
     if plan.air is None:
         raise ConfigError("the job plans no atmosphere", where=str(call.job))
-    data = (json.dumps(air_as_json(plan.air.grid), indent=1, allow_nan=False) + "\n").encode()
+    data = (json.dumps(air_as_json(plan.air), indent=1, allow_nan=False) + "\n").encode()
+    inputs = {path.name: fingerprint(str(path)).sha256 or "" for path in plan.air.files}
     described = StageFile(
         file=_FILE,
         units=None,
@@ -79,16 +89,18 @@ def make_atmosphere(call: StageCall) -> StageRecord:
         size=len(data),
         sha256=hashlib.sha256(data).hexdigest(),
     )
-    record = record_of(plan, "atmosphere", {"air": described}, {}, dict(plan.air.account))
+    record = record_of(plan, "atmosphere", {"air": described}, inputs, dict(plan.air.account))
     with stage_folder(call.output) as folder:
         write_whole(folder / _FILE, data)
         write_whole(folder / RECORD, record.text().encode())
     return record
 
 
-def air_as_json(grid: AtmosphereGrid) -> dict[str, Any]:
-    """An atmosphere grid in plain values; numbers are written with all their digits."""
+def air_as_json(air: Air) -> dict[str, Any]:
+    """The air in plain values; numbers are written with all their digits."""
+    grid = air.grid
     return {
+        "elevation": None if isinstance(air.elevation, RasterSource) else float(air.elevation),
         "units": _UNITS,
         "dimensions": _DIMENSIONS,
         "axes": {name: getattr(grid, name).tolist() for name in _AXES},
@@ -98,11 +110,19 @@ def air_as_json(grid: AtmosphereGrid) -> dict[str, Any]:
     }
 
 
-def read_air(folder: StageFolder) -> AtmosphereGrid:
-    """The atmosphere grid of a finished atmosphere stage.
+def read_air(folder: StageFolder, scene: Scene) -> Air:
+    """The air of a finished atmosphere stage.
+
+    Parameters
+    ----------
+    folder : StageFolder
+    scene : Scene
+        Names the elevation raster, where the air is looked up with one.
 
     Raises
     ------
+    ConfigError
+        If the scene names no elevation, and the air needs it.
     InputError
         If its file is not as it should be.
     """
@@ -110,7 +130,7 @@ def read_air(folder: StageFolder) -> AtmosphereGrid:
     try:
         document = checked(AirDocument, json.loads(path.read_text(encoding="utf-8")), where=str(path))
         axes = {name: np.array(document.axes[name], dtype=np.float64) for name in _AXES}
-        return AtmosphereGrid(
+        grid = AtmosphereGrid(
             **axes,
             terms=_terms_of(document.terms),
             causes={name: _terms_of(terms) for name, terms in document.causes.items()},
@@ -122,6 +142,14 @@ def read_air(folder: StageFolder) -> AtmosphereGrid:
             where=str(path),
             remedy="Run that stage again",
         ) from error
+    elevation = scene.elevation if document.elevation is None else document.elevation
+    if elevation is None:
+        raise ConfigError(
+            f"the air is looked up with the ground's height, and the scene {scene.name} names no elevation",
+            where=scene.origin or None,
+            remedy="Add elevation to the scene file (a raster or a number in m)",
+        )
+    return Air(grid, elevation, dict(folder.record.method))
 
 
 def _terms_as_json(terms: AirTerms) -> dict[str, Any]:

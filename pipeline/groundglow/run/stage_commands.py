@@ -57,7 +57,7 @@ def atmosphere(call: StageCall, *, quiet: bool, as_json: bool) -> int:
 def surface_temperature(
     call: StageCall,
     *,
-    given: tuple[Path, Path, Path, Path],
+    given: tuple[Path, Path, Path, Path | None],
     quiet: bool,
     as_json: bool,
 ) -> int:

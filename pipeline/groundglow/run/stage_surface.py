@@ -12,7 +12,18 @@ from groundglow.atmosphere.interpolate import pack
 from groundglow.errors import ConfigError
 from groundglow.quantities import FLAG
 from groundglow.raster.grid import Block
-from groundglow.retrieval.chain import Inversion, emitted_flux, invert, surface_fluxes
+from groundglow.retrieval.chain import (
+    ChainSettings,
+    Flags,
+    Inversion,
+    Pixels,
+    emitted_flux,
+    invert,
+    surface_fluxes,
+)
+from groundglow.retrieval.chain_water_vapour import invert_with_column
+from groundglow.run.air_source import Air
+from groundglow.run.column import ColumnAndGround
 from groundglow.run.plan import ScenePlan
 from groundglow.run.stage_atmosphere import read_air
 from groundglow.run.stage_emissivity import StoredEmissivity
@@ -20,7 +31,7 @@ from groundglow.run.stage_output import StageBlock, encoded, make_rasters
 from groundglow.run.stage_radiance import read_flags, read_variable
 from groundglow.run.stage_record import StageFolder, StageRecord, record_of
 from groundglow.run.stage_setting import Setting, StageCall
-from groundglow.run.worker import AirAndGround, SceneWork, tiles
+from groundglow.run.worker import AirAndGround, SceneWork, ground_of, tiles
 
 _OUTSIDE_VALIDITY = np.uint16(FLAG["atmosphere_outside_validity"].mask)
 _TEMPERATURE = "surface_temperature"
@@ -33,16 +44,16 @@ TEMPERATURES = (
 
 @dataclass(frozen=True)
 class SurfaceInputs:
-    """The folders that the surface temperature is made from."""
+    """The folders that the surface temperature is made from; no air for the water-vapour method."""
 
     radiance: Path
     brightness_temperature: Path
     emissivity: Path
-    atmosphere: Path
+    atmosphere: Path | None
 
 
 def make_surface_temperature(call: StageCall, inputs: SurfaceInputs) -> StageRecord:
-    """Inversion of the radiative transfer equation, with the uncertainty by what errors share.
+    """Surface temperature by the job's method, with the uncertainty by what errors share.
 
     Raises
     ------
@@ -50,23 +61,35 @@ def make_surface_temperature(call: StageCall, inputs: SurfaceInputs) -> StageRec
         If an input is missing or not what it should be, or the output cannot be written.
     """
     setting = Setting.read(call)
-    plan = setting.plan_of_ground()
-    radiance = setting.given(inputs.radiance, "radiance", plan)
-    brightness = setting.given(inputs.brightness_temperature, "brightness-temperature", plan)
-    emissivity = setting.given(inputs.emissivity, "emissivity", plan)
-    atmosphere = setting.given(inputs.atmosphere, "atmosphere", plan)
-    work = _work_with(plan, setting, emissivity, atmosphere)
-    sky = bool(np.isfinite(read_air(atmosphere).terms.sky_flux).any())
-    names = (*TEMPERATURES, "transmittance", "path_radiance", *(("sky_flux",) if sky else ()))
-    sources = {"radiance": radiance, "brightness-temperature": brightness, "emissivity": emissivity}
-    identities = {name: folder.identity() for name, folder in {**sources, "atmosphere": atmosphere}.items()}
+    by_column = setting.job.atmosphere.source == "column"
+    plan = setting.plan() if by_column else setting.plan_of_ground()
+    given = {
+        "radiance": setting.given(inputs.radiance, "radiance", plan),
+        "brightness-temperature": setting.given(
+            inputs.brightness_temperature, "brightness-temperature", plan
+        ),
+        "emissivity": setting.given(inputs.emissivity, "emissivity", plan),
+    }
+    names = TEMPERATURES
+    work = replace(plan.work, emissivity=StoredEmissivity(given["emissivity"]))
+    if not by_column:
+        given["atmosphere"] = setting.given(_needed(inputs.atmosphere), "atmosphere", plan)
+        air = read_air(given["atmosphere"], setting.scene)
+        work = _with_air(work, air)
+        sky = bool(np.isfinite(air.grid.terms.sky_flux).any())
+        names = (*names, "transmittance", "path_radiance", *(("sky_flux",) if sky else ()))
+    surface = _SurfaceWork(plan, work, given["radiance"], given["brightness-temperature"], names)
     return make_rasters(
         call.output,
         plan.work.grid,
         (*names, "quality"),
-        partial(_surface_block, _SurfaceWork(plan, work, radiance, brightness, names)),
+        partial(_surface_block, surface),
         lambda files: record_of(
-            plan, "surface-temperature", files, identities, {"method": setting.job.temperature.method}
+            plan,
+            "surface-temperature",
+            files,
+            {name: folder.identity() for name, folder in given.items()},
+            {"method": setting.job.temperature.method},
         ),
         workers=call.workers,
     )
@@ -103,28 +126,23 @@ def make_flux(call: StageCall, surface_temperature: Path, emissivity: Path) -> S
     )
 
 
-def _work_with(
-    plan: ScenePlan, setting: Setting, emissivity: StageFolder, atmosphere: StageFolder
-) -> SceneWork:
-    """The scene's work with the ground and the air of earlier stages."""
-    grid = read_air(atmosphere)
-    elevation = setting.scene.elevation
-    if elevation is None and grid.height.size > 1:
+def _needed(atmosphere: Path | None) -> Path:
+    if atmosphere is None:
         raise ConfigError(
-            f"the air is given over ground heights, and the scene {setting.scene.name} names no elevation",
-            where=setting.call.scene,
-            remedy="Add elevation to the scene file (a raster or a number in m)",
+            "this job's method needs the air",
+            where="--atmosphere",
+            remedy="Give the folder that 'groundglow atmosphere' wrote",
         )
+    return atmosphere
+
+
+def _with_air(work: SceneWork, air: Air) -> SceneWork:
+    """The scene's work with the air of an earlier stage."""
+    grid = air.grid
     settings = replace(
-        plan.work.settings, weighting=grid.surface_temperature.astype(np.float32), causes=len(grid.causes)
+        work.settings, weighting=grid.surface_temperature.astype(np.float32), causes=len(grid.causes)
     )
-    return replace(
-        plan.work,
-        elevation=0.0 if elevation is None else elevation,
-        emissivity=StoredEmissivity(emissivity),
-        air=pack(grid),
-        settings=settings,
-    )
+    return replace(work, elevation=air.elevation, air=pack(grid), settings=settings)
 
 
 @dataclass(frozen=True)
@@ -139,39 +157,66 @@ class _SurfaceWork:
 
 
 def _surface_block(given: _SurfaceWork, block: Block) -> StageBlock:
-    plan, work, settings = given.plan, given.work, given.work.settings
+    plan, work = given.plan, given.work
     radiance = read_variable(given.radiance, "radiance", plan, block)
+    brightness = read_variable(given.brightness, "brightness_temperature", plan, block)
     flags = read_flags(given.radiance, plan, block) | read_flags(given.brightness, plan, block)
-    ground = AirAndGround.read(work, block)
+    ground = ground_of(work, block)
     assert ground is not None
+    flags |= ground.emissivity.flags
     maps = {name: np.empty((block.height, block.width), np.float32) for name in given.names}
     for rows, columns in tiles(block):
-        air = ground.air(rows, columns)
-        own = np.ascontiguousarray(flags[rows, columns]) | ground.emissivity.flags[rows, columns]
-        own[np.isnan(air[0])] |= _OUTSIDE_VALIDITY
-        here = ground.emissivity.window(rows, columns)
-        found = invert(
-            np.ascontiguousarray(radiance[rows, columns]),
-            own,
-            here.band,
-            here.band_uncertainty,
-            air=air,
-            settings=settings,
-        )
-        flags[rows, columns] = own
-        count = settings.weighting.size
-        for name, values in {
-            **temperatures_of(found),
-            "transmittance": air[count // 2],
-            "path_radiance": air[count],
-            "sky_flux": air[count + 2],
-        }.items():
-            if name in maps:
-                maps[name][rows, columns] = values
+        tile = (rows, columns)
+        at_sensor = [np.ascontiguousarray(values[tile]) for values in (radiance, brightness)]
+        own = np.ascontiguousarray(flags[tile])
+        if isinstance(ground, AirAndGround):
+            found = _tile_with_air(ground, tile, at_sensor[0], own, work.settings)
+        else:
+            found = _tile_with_column(ground, tile, at_sensor, own, work.settings)
+        flags[tile] = own
+        for name, values in maps.items():
+            values[tile] = found[name]
     return encoded({**maps, "quality": flags}, block, work.grid)
 
 
-def temperatures_of(found: Inversion) -> dict[str, np.ndarray]:
+def _tile_with_air(
+    ground: AirAndGround, tile: tuple[slice, slice], radiance: Pixels, flags: Flags, settings: ChainSettings
+) -> dict[str, Pixels]:
+    air = ground.air(*tile)
+    # Where the ground height or the angle is not known, neither is the air.
+    flags[np.isnan(air[0])] |= _OUTSIDE_VALIDITY
+    here = ground.emissivity.window(*tile)
+    found = invert(radiance, flags, here.band, here.band_uncertainty, air=air, settings=settings)
+    count = settings.weighting.size
+    return temperatures_of(found) | {
+        "transmittance": air[count // 2],
+        "path_radiance": air[count],
+        "sky_flux": air[count + 2],
+    }
+
+
+def _tile_with_column(
+    ground: ColumnAndGround,
+    tile: tuple[slice, slice],
+    at_sensor: list[Pixels],
+    flags: Flags,
+    settings: ChainSettings,
+) -> dict[str, Pixels]:
+    water = ground.water_of(*tile)
+    flags[np.isnan(water)] |= _OUTSIDE_VALIDITY
+    found = invert_with_column(
+        at_sensor[0],
+        at_sensor[1],
+        flags,
+        ground.emissivity.window(*tile),
+        water,
+        settings=settings,
+        method=ground.method,
+    )
+    return temperatures_of(found)
+
+
+def temperatures_of(found: Inversion) -> dict[str, Pixels]:
     """An inversion by the names of its variables."""
     parts = (
         found.temperature,

@@ -10,11 +10,14 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from groundglow.retrieval.chain import ChainSettings, invert
+from groundglow.quantities import FLAG
+from groundglow.retrieval.chain import ChainSettings, EmissivityFields, invert
+from groundglow.retrieval.chain_water_vapour import WaterVapourSettings, invert_with_column
 from groundglow.stages import schema
 from groundglow.stages.pixels import Output, contiguous, over_pixels, own_flags
 from groundglow.stages.variables import AIR_TERMS, CAUSE, WEIGHTING
 
+_OUTSIDE_VALIDITY = np.uint16(FLAG["atmosphere_outside_validity"].mask)
 # The sky's flux takes no part in the inversion.
 _TERMS = AIR_TERMS[:3]
 _NAMES = (
@@ -68,6 +71,51 @@ def surface_temperature(dataset: xr.Dataset, settings: ChainSettings) -> xr.Data
     return dataset.assign(found)
 
 
+def surface_temperature_from_column(
+    dataset: xr.Dataset, settings: ChainSettings, method: WaterVapourSettings
+) -> xr.Dataset:
+    """Surface temperature by the published water-vapour form, which needs the column alone.
+
+    Parameters
+    ----------
+    dataset : Dataset
+        Holds ``radiance``, ``brightness_temperature``, ``emissivity``, ``emissivity_uncertainty``,
+        ``quality``, and ``column_water_vapour`` [kg m-2] per pixel or as one number.
+    settings : ChainSettings
+        Of the band: ``plan.work.settings``.
+    method : WaterVapourSettings
+        Coefficients and the column's uncertainty: ``plan.work.column.settings``.
+
+    Returns
+    -------
+    Dataset
+        As :func:`surface_temperature`.
+
+    Raises
+    ------
+    InputError
+        Listing every variable that is missing or in another unit.
+    """
+    needed = (
+        "radiance",
+        "brightness_temperature",
+        "emissivity",
+        "emissivity_uncertainty",
+        "column_water_vapour",
+    )
+    schema.require_variables(dataset, (*needed, "quality"))
+    water = dataset["column_water_vapour"]
+    if not water.ndim:
+        water = xr.full_like(dataset["quality"], np.float32(float(water)), dtype=np.float32)
+    found = over_pixels(
+        partial(_invert_with_column, settings=settings, method=method),
+        [dataset["quality"], *(dataset[name] for name in needed[:-1]), water],
+        [*(Output(name) for name in _NAMES), Output("quality", np.uint16)],
+        origin="the published form with the column water vapour",
+    )
+    return dataset.assign(found)
+
+
 def _invert(
     quality: NDArray[Any],
     radiance: NDArray[Any],
@@ -84,6 +132,30 @@ def _invert(
         contiguous(uncertainty),
         air=_fields(air, settings, radiance.shape),
         settings=settings,
+    )
+    effect = found.surface_class
+    return found.temperature, found.total, found.pixel, np.abs(effect), found.scene, effect, flags
+
+
+def _invert_with_column(
+    quality: NDArray[Any],
+    radiance: NDArray[Any],
+    brightness: NDArray[Any],
+    emissivity: NDArray[Any],
+    uncertainty: NDArray[Any],
+    water: NDArray[Any],
+    settings: ChainSettings,
+    method: WaterVapourSettings,
+) -> tuple[NDArray[Any], ...]:
+    flags, column, band = own_flags(quality), contiguous(water), contiguous(emissivity)
+    # Where the column is not known, neither is the air.
+    flags[np.isnan(column)] |= _OUTSIDE_VALIDITY
+    nothing = np.zeros(band.shape, np.float32)
+    ground = EmissivityFields(
+        band, contiguous(uncertainty), band, nothing, nothing, np.zeros(band.shape, np.uint16)
+    )
+    found = invert_with_column(
+        contiguous(radiance), contiguous(brightness), flags, ground, column, settings=settings, method=method
     )
     effect = found.surface_class
     return found.temperature, found.total, found.pixel, np.abs(effect), found.scene, effect, flags

@@ -14,6 +14,8 @@ _BETWEEN = (
     Quantity("elevation", "m", "ground height above sea level", "surface_altitude", (-500.0, 9000.0), 23),
     Quantity("view_zenith_angle", "degree", "zenith angle of the sensor seen from the surface",
              "sensor_zenith_angle", (0.0, 90.0), 23),
+    Quantity("column_water_vapour", "kg m-2", "column water vapour of the air",
+             "atmosphere_mass_content_of_water_vapor", (0.0, 100.0), 23),
     Quantity("emissivity_uncertainty", "1", "standard uncertainty of the surface emissivity in the thermal band",
              None, (0.0, 1.0), 23),
     Quantity("broadband_emissivity_shared_uncertainty", "1",
@@ -70,7 +72,7 @@ def attributes(name: str, origin: str = "") -> dict[str, object]:
     if name == "quality":
         found["flag_masks"] = [flag.mask for flag in FLAGS]
         found["flag_meanings"] = " ".join(flag.name for flag in FLAGS)
-    elif name not in ("elevation", "view_zenith_angle"):
+    elif name not in ("elevation", "view_zenith_angle", "column_water_vapour"):
         found["ancillary_variables"] = "quality"
     if origin:
         found["origin"] = origin
