@@ -14,6 +14,7 @@ from uuid import uuid4
 
 from groundglow.errors import GroundglowError
 from groundglow.run.batch_entry import SceneEntry
+from groundglow.run.batch_interrupt import Interruption
 from groundglow.run.batch_memory import Memory, Seen
 from groundglow.run.batch_scene import SceneReply, SceneRequest, make_scene, up_to_date
 from groundglow.run.catalogue import Catalogue
@@ -115,6 +116,8 @@ class Batch:
     memory : Memory
     catalogue : Catalogue
     progress : Progress
+    interruption : Interruption
+        Put off while a scene is being put in place.
     on_failure : callable
         Told of each scene that is given up.
     """
@@ -127,6 +130,7 @@ class Batch:
         memory: Memory,
         catalogue: Catalogue,
         progress: Progress,
+        interruption: Interruption,
         on_failure: Callable[[SceneOutcome], None],
     ) -> None:
         self._settings = settings
@@ -135,6 +139,7 @@ class Batch:
         self._memory = memory
         self._catalogue = catalogue
         self._progress = progress
+        self._interruption = interruption
         self._on_failure = on_failure
         self._waiting: list[_Attempt] = []
         self._orders = itertools.count()
@@ -169,16 +174,18 @@ class Batch:
                     return
                 finished, _ = wait(under_way, timeout=self._patience(), return_when=FIRST_COMPLETED)
                 for future in finished:
-                    self._settle(future.result(), *under_way.pop(future))
+                    with self._interruption.put_off():
+                        self._settle(future.result(), *under_way.pop(future))
         except BaseException:
             self._runner.stop()
             raise
         finally:
-            pool.shutdown(wait=True, cancel_futures=True)
-            for attempt, request in under_way.values():
-                self._log.tell("stopped", scene=attempt.entry.label, address=attempt.entry.address)
-                self._settings.place.discard(None, request.token)
-            self._catalogue.write(always=True)
+            with self._interruption.put_off():
+                pool.shutdown(wait=True, cancel_futures=True)
+                for attempt, request in under_way.values():
+                    self._log.tell("stopped", scene=attempt.entry.label, address=attempt.entry.address)
+                    self._settings.place.discard(None, request.token)
+                self._catalogue.write(always=True)
 
     def _next(self, fresh: Iterator[SceneEntry], busy: bool) -> _Attempt | None:
         """The next attempt to begin now; None where there is none, or none yet."""
@@ -189,7 +196,8 @@ class Batch:
             seen = None if self._settings.force else self._memory.recall(entry.address)
             if seen is None or not seen.still_true(self._settings.job_digest + entry.digest):
                 return _Attempt(0.0, next(self._orders), entry)
-            self._found_unchanged(entry, seen)
+            with self._interruption.put_off():
+                self._found_unchanged(entry, seen)
         if self._waiting and not busy:
             time.sleep(max(self._waiting[0].due - now, 0.0))
             return heapq.heappop(self._waiting)

@@ -94,6 +94,7 @@ class SceneReply:
 class _Account:
     """Collects the events of one scene."""
 
+    name: str
     events: list[dict[str, Any]] = field(default_factory=list)
     began: float = field(default_factory=time.perf_counter)
     step: float = field(default_factory=time.perf_counter)
@@ -135,7 +136,7 @@ def make_scene(
     StoppedError
         If the run was asked to end.
     """
-    account = _Account()
+    account = _Account(request.entry.label)
     try:
         return _made(request, scheduler, progress, account, largest)
     except StoppedError:
@@ -165,6 +166,7 @@ def _made(
     job, place, entry = request.job, request.place, request.entry
     described = stamps(description_files(entry.address)) if entry.item is None else {}
     scene = open_scene(entry.address) if entry.item is None else read_item(entry.item, entry.list_address)
+    account.name = scene.name
     if not job.select.wants_everything:
         reason = left_out(job.select, entry.known_better(scene.acquired, place_of_scene(scene)))
         if reason is not None:
@@ -175,7 +177,7 @@ def _made(
     pixels = plan.work.grid.height * plan.work.grid.width
     if largest is not None and pixels > largest:
         return SceneReply(None)
-    account.tell("planned", scene=plan.name, grid=describe_grid(plan.work.grid), blocks=len(plan.blocks))
+    account.tell("planned", grid=describe_grid(plan.work.grid), blocks=len(plan.blocks))
     before = _input_stamps(plan)
     fingerprint = scene_fingerprint(job, plan)
     account.tell("inputs read for checksums", fingerprint=fingerprint.digest)
@@ -254,6 +256,6 @@ def _failed(
 ) -> SceneReply:
     account.tell("failed", reason=reason)
     outcome = SceneOutcome(
-        request.entry.label, "failed", reason, seconds=account.seconds, address=request.entry.address
+        account.name, "failed", reason, seconds=account.seconds, address=request.entry.address
     )
     return SceneReply(outcome, may_pass=transient, usage=usage, events=tuple(account.events))

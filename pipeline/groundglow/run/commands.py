@@ -3,19 +3,17 @@
 from __future__ import annotations
 
 import json
-import signal
 import sys
 import time
 from collections.abc import Iterable, Iterator
-from contextlib import ExitStack, closing, contextmanager
+from contextlib import ExitStack, closing
 from itertools import chain
 from pathlib import Path
-from types import FrameType
-from typing import Any
 
 from groundglow.errors import ConfigError, InputError
 from groundglow.run.batch import Batch, BatchSettings, LocalRunner, Runner
 from groundglow.run.batch_entry import SceneEntry
+from groundglow.run.batch_interrupt import Interruption
 from groundglow.run.batch_lists import wanted_scenes
 from groundglow.run.batch_memory import Memory
 from groundglow.run.batch_plan import PlanSettings, plan_batch
@@ -27,6 +25,7 @@ from groundglow.run.progress import progress_for
 from groundglow.run.publish_place import Place
 from groundglow.run.publish_store import place_at
 from groundglow.run.report import EventLog, begin_folder, last_measured, run_summary, write_report
+from groundglow.run.retry import StoppedError
 from groundglow.run.scheduler import available_cores
 from groundglow.run.table import batch_plan_table, outcome_table
 
@@ -69,20 +68,25 @@ def run_job(
     Raises
     ------
     GroundglowError
-        If the job cannot be followed, or nothing can be written.
-    KeyboardInterrupt
-        If the run was asked to end; nothing half-written is left and the report is written.
+        If the job cannot be followed, or nothing can be written; a :class:`StoppedError` if the run was
+        asked to end, once nothing half-written is left and the report is written.
     """
     job = read_job(path)
     folder = path.parent if scheduler == "threads" else path.parent.absolute()
     entries = _first_known(wanted_scenes(job, folder))
     place = place_at(_output(job, folder, output))
     began = time.monotonic()
+    interruption = Interruption()
     with ExitStack() as held:
         held.enter_context(place.locked())
-        held.enter_context(_terminable())
+        held.enter_context(interruption.heeded())
         runner = held.enter_context(closing(_runner(scheduler, workers or job.run.workers, place)))
-        batch = _run_batch(held, job, folder, place, runner, entries, quiet=quiet, force=force, began=began)
+        try:
+            batch = _run_batch(
+                held, job, folder, place, runner, interruption, entries, quiet=quiet, force=force, began=began
+            )
+        except KeyboardInterrupt:
+            raise StoppedError("interrupted; nothing half-written was left") from None
     seconds = time.monotonic() - began
     outcomes = batch.outcomes
     if as_json:
@@ -163,6 +167,7 @@ def _run_batch(
     folder: Path,
     place: Place,
     runner: Runner,
+    interruption: Interruption,
     entries: Iterable[SceneEntry],
     *,
     quiet: bool,
@@ -180,19 +185,20 @@ def _run_batch(
     catalogue = Catalogue(place)
     catalogue.refresh()
     settings = BatchSettings(job, folder, place, job_digest(job, folder), force)
-    batch = Batch(settings, runner, log, memory, catalogue, progress, _say_failure)
+    batch = Batch(settings, runner, log, memory, catalogue, progress, interruption, _say_failure)
     log.tell("run began", output=place.address, workers=runner.workers)
     ended = "stopped"
     try:
         batch.run(entries)
         ended = "complete"
     finally:
-        outcomes = batch.outcomes
-        seconds = time.monotonic() - began
-        log.tell("run ended", how=ended, seconds=round(seconds, 3), scenes=len(outcomes))
-        if run_folder is not None:
-            summary = run_summary(outcomes, place.address, seconds, ended=ended, workers=runner.workers)
-            write_report(run_folder, summary, outcomes)
+        with interruption.put_off():
+            outcomes = batch.outcomes
+            seconds = time.monotonic() - began
+            log.tell("run ended", how=ended, seconds=round(seconds, 3), scenes=len(outcomes))
+            if run_folder is not None:
+                summary = run_summary(outcomes, place.address, seconds, ended=ended, workers=runner.workers)
+                write_report(run_folder, summary, outcomes)
     return batch
 
 
@@ -234,22 +240,3 @@ def _runner(scheduler: str, workers: int | None, place: Place) -> Runner:
     from groundglow.run.batch_cluster import ClusterRunner  # noqa: PLC0415  (most runs need no cluster)
 
     return ClusterRunner(scheduler, place)
-
-
-@contextmanager
-def _terminable() -> Iterator[None]:
-    """Let SIGTERM end the run as an interrupt does, cleaning up on the way."""
-
-    def interrupt(number: int, frame: FrameType | None) -> None:
-        raise KeyboardInterrupt
-
-    try:
-        before: Any = signal.signal(signal.SIGTERM, interrupt)
-    except ValueError:
-        # Not the main thread: signals are not ours to handle there.
-        yield
-        return
-    try:
-        yield
-    finally:
-        signal.signal(signal.SIGTERM, before)
