@@ -181,7 +181,7 @@ def main() -> None:
         subprocess.run([sys.executable, __file__, "--size", str(options.size), "--paint", name], check=True)
         (folder / "scene.toml").write_text(SCENE)
         (folder / "job.toml").write_text(JOB)
-        job = [sys.executable, "-m", "groundglow", "run", str(folder / "job.toml"), "--quiet"]
+        job = [sys.executable, "-m", "groundglow", "run", str(folder / "job.toml"), "--quiet", "--force"]
         timed(job)  # compiles the kernels, once per installation
         for layer in LAYERS:
             subprocess.run([sys.executable, "-c", DECODE_SCRIPT, str(folder), layer], check=True)
