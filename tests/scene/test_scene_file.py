@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from groundglow.errors import ConfigError
+from groundglow.errors import ConfigError, InputError
 from groundglow.raster.band import RasterSource
 from groundglow.scene.open import open_scene
 from groundglow.scene.quality import QualityRule
@@ -234,7 +234,7 @@ def test_several_mistakes_are_told_at_once(tmp_path: Path) -> None:
 
 
 def test_files_that_are_no_scene_files(tmp_path: Path) -> None:
-    with pytest.raises(ConfigError, match="there is no such file"):
+    with pytest.raises(InputError, match="there is no such file"):
         open_scene(str(tmp_path / "scene.toml"))
     with pytest.raises(ConfigError, match="not valid TOML"):
         open_scene(scene_file(tmp_path, "[scene\n"))

@@ -4,11 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from typing import TypeVar
 
+import numpy as np
 from affine import Affine
+from numpy.typing import NDArray
 from rasterio.crs import CRS
 
 TILE = 512
+
+Coordinate = TypeVar("Coordinate", float, NDArray[np.float64])
 
 
 @dataclass(frozen=True)
@@ -76,4 +81,12 @@ def compose(outer: Affine, inner: Affine) -> Affine:
         outer.d * inner.a + outer.e * inner.d,
         outer.d * inner.b + outer.e * inner.e,
         outer.d * inner.c + outer.e * inner.f + outer.f,
+    )
+
+
+def apply(transform: Affine, x: Coordinate, y: Coordinate) -> tuple[Coordinate, Coordinate]:
+    """A transform of a point, or of arrays of points."""
+    return (
+        transform.a * x + transform.b * y + transform.c,
+        transform.d * x + transform.e * y + transform.f,
     )

@@ -11,7 +11,6 @@ from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
-from affine import Affine
 from numpy.typing import NDArray
 from rasterio.errors import CRSError, RasterioError
 from rasterio.warp import transform as transform_points
@@ -19,7 +18,7 @@ from rasterio.warp import transform as transform_points
 from groundglow.errors import InputError
 from groundglow.kernels import kernel
 from groundglow.raster.environment import gdal_environment
-from groundglow.raster.grid import Block
+from groundglow.raster.grid import Block, apply
 from groundglow.raster.relation import Otherwise, longitude_period
 
 _STEPS = (64, 32, 16, 8, 4, 2, 1)
@@ -71,7 +70,7 @@ def source_positions(between: Otherwise, columns: Float, rows: Float) -> tuple[F
         Target pixel coordinates; whole numbers are pixel corners.
     """
     target, source = between.target, between.source
-    x, y = _apply(target.transform, columns.ravel(), rows.ravel())
+    x, y = apply(target.transform, columns.ravel(), rows.ravel())
     if source.crs != target.crs:
         try:
             with gdal_environment():
@@ -82,16 +81,8 @@ def source_positions(between: Otherwise, columns: Float, rows: Float) -> tuple[F
             ) from error
     x = np.where(np.isfinite(x), x, np.nan)
     y = np.where(np.isfinite(y), y, np.nan)
-    found_columns, found_rows = _apply(~source.transform, x, y)
+    found_columns, found_rows = apply(~source.transform, x, y)
     return found_columns.reshape(columns.shape), found_rows.reshape(rows.shape)
-
-
-def _apply(transform: Affine, x: Float, y: Float) -> tuple[Float, Float]:
-    """An affine transform of many points."""
-    return (
-        transform.a * x + transform.b * y + transform.c,
-        transform.d * x + transform.e * y + transform.f,
-    )
 
 
 def node_positions(between: Otherwise, block: Block, plan: MeshPlan) -> tuple[int, int, Float, Float]:

@@ -16,7 +16,6 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from groundglow.atmosphere.humidity import ppmv, vapour_pressure
 from groundglow.atmosphere.profile import Profile
 from groundglow.atmosphere.sounding import profile_of_sounding
 from groundglow.atmosphere.structure import geometric_height
@@ -24,19 +23,12 @@ from groundglow.errors import DomainError, InputError
 from groundglow.scene.analysis_lattice import Corners, Lattice, lattice_of
 from groundglow.scene.analysis_layout import StoredField, Times, fields_of, looked_for
 from groundglow.scene.analysis_open import open_analysis_file
+from groundglow.scene.analysis_window import HUMIDITIES, humidity_of, mixed, read_window
 
 Float = NDArray[np.float64]
 
 # Air changes too much in a longer time to be taken as linear in between: twice-daily analyses still count.
 LONGEST_STEP = np.timedelta64(12, "h")
-# Of one of these, or both in any order; the first one there is used.
-_HUMIDITIES = ("specific_humidity", "relative_humidity")
-# Wave-like noise of analyses may take humidity below zero, and relative humidity counted over ice exceeds
-# 100 % of what is counted over water: both are cut. Beyond these it is another quantity.
-_LOWEST_HUMIDITY = {"specific_humidity": -1e-3, "relative_humidity": -20.0}  # kg kg-1, %
-_HIGHEST_HUMIDITY = {"specific_humidity": 0.06, "relative_humidity": 200.0}
-_SATURATED = 100.0  # %
-_KELVIN_RANGE = (150.0, 340.0)
 
 
 @dataclass(frozen=True)
@@ -87,14 +79,9 @@ class Analysis:
         return self.lattice.spacing
 
     @property
-    def humidity(self) -> str:
-        """The measure of humidity that is used."""
-        return next(role for role in _HUMIDITIES if role in self.fields)
-
-    @property
     def times(self) -> Times:
         """Times at which all that is needed is known, in UTC, rising."""
-        needed = [self.fields[role] for role in ("temperature", self.humidity, "height")]
+        needed = [self.fields[role] for role in ("temperature", humidity_of(self.fields), "height")]
         known = [np.unique(np.concatenate([field.times for field in fields])) for fields in needed]
         return np.intersect1d(np.intersect1d(known[0], known[1]), known[2])
 
@@ -128,7 +115,9 @@ class Analysis:
             raise InputError(error.what, where=self.names, remedy=error.remedy) from error
         rows = slice(min(c.row for c in corners), max(c.row for c in corners) + 2)
         columns = slice(min(c.column for c in corners), max(c.column for c in corners) + 2)
-        window = _mixed([(self._window(time, rows, columns), share) for time, share in shares])
+        window = mixed(
+            [(read_window(self.fields, self.lattice, time, rows, columns), share) for time, share in shares]
+        )
         note = f"analysis {self.names} at {_told(when)}"
         return [
             self._profile(window, corner, (rows.start, columns.start), note, place)
@@ -166,45 +155,6 @@ class Analysis:
         share = float((wanted - times[upper - 1]) / step)
         return [(times[upper - 1], 1.0 - share), (times[upper], share)]
 
-    def _window(self, time: np.datetime64, rows: slice, columns: slice) -> dict[str, Float]:
-        """Every quantity at one time: (levels, rows, columns), from the ground up, in our units."""
-        temperature_field = self._field("temperature", time)
-        assert temperature_field is not None and temperature_field.levels is not None  # noqa: PT018
-        pressure = np.sort(temperature_field.levels)[::-1]
-        found = {"pressure": pressure}
-        for role in ("temperature", self.humidity, "height", "ozone", "surface_pressure"):
-            field = self._field(role, time)
-            if field is not None:
-                found[role] = self._read(field, time, rows, columns, pressure)
-        _refuse_temperatures(found["temperature"], temperature_field.where)
-        humidity_field = self._field(self.humidity, time)
-        assert humidity_field is not None  # the time is one of those at which it is known
-        found["water_vapour"] = _mole_fraction(
-            self.humidity, found.pop(self.humidity), found["temperature"], pressure, humidity_field.where
-        )
-        return found
-
-    def _field(self, role: str, time: np.datetime64) -> StoredField | None:
-        return next((field for field in self.fields.get(role, ()) if time in field.times), None)
-
-    def _read(
-        self, field: StoredField, time: np.datetime64, rows: slice, columns: slice, pressure: Float
-    ) -> Float:
-        """One variable in a window of the lattice, at the levels wanted; NaN at levels it lacks."""
-        row, column = self.lattice.row[rows], self.lattice.column[columns]
-        stored = field.read(
-            int(np.flatnonzero(field.times == time)[0]), slice(int(row.min()), int(row.max()) + 1), column
-        )
-        stored = stored[..., row - row.min(), :]
-        if field.levels is None:
-            return stored
-        values = np.full((pressure.size, *stored.shape[1:]), np.nan)
-        place = {round(float(level), 4): index for index, level in enumerate(field.levels)}
-        for index, level in enumerate(pressure):
-            if round(float(level), 4) in place:
-                values[index] = stored[place[round(float(level), 4)]]
-        return values
-
     def _profile(
         self,
         window: Mapping[str, Float],
@@ -236,8 +186,8 @@ class Analysis:
 
 def _refuse_missing(fields: Mapping[str, Sequence[StoredField]], where: str) -> None:
     missing = [role for role in ("temperature", "height") if role not in fields]
-    if not any(role in fields for role in _HUMIDITIES):
-        missing.extend(_HUMIDITIES)
+    if not any(role in fields for role in HUMIDITIES):
+        missing.extend(HUMIDITIES)
     if missing:
         told = "; ".join(f"{role.replace('_', ' ')} ({looked_for(role)})" for role in missing)
         either = " (one humidity is enough)" if "specific_humidity" in missing else ""
@@ -258,52 +208,6 @@ def _common_lattice(fields: Mapping[str, Sequence[StoredField]]) -> Lattice:
                     remedy="Give all variables on one grid",
                 )
     return lattice_of(first.latitude, first.longitude, where=str(first.path))
-
-
-def _mixed(parts: Sequence[tuple[Mapping[str, Float], float]]) -> dict[str, Float]:
-    """Weighted mean of windows, of what all of them hold."""
-    first = parts[0][0]
-    for window, _ in parts[1:]:
-        if not np.array_equal(window["pressure"], first["pressure"]):
-            raise InputError("the pressure levels differ from time to time")
-    return {
-        role: np.sum([share * window[role] for window, share in parts], axis=0)
-        for role in first
-        if all(role in window for window, _ in parts)
-    }
-
-
-def _mole_fraction(measure: str, humidity: Float, temperature: Float, pressure: Float, where: str) -> Float:
-    """Mole fraction of water; noise below zero and what is above saturation is cut. [1e-6]."""
-    low, high = np.nanmin(humidity, initial=0.0), np.nanmax(humidity, initial=0.0)
-    if low < _LOWEST_HUMIDITY[measure] or high > _HIGHEST_HUMIDITY[measure]:
-        raise InputError(
-            f"values of {low:g} to {high:g} are no {measure.replace('_', ' ')} in the unit stated",
-            where=where,
-        )
-    if measure == "relative_humidity":
-        if 0.0 < high <= 1.05:
-            raise InputError(
-                f"relative humidities of at most {high:g} % look like fractions of one",
-                where=where,
-                remedy="Their unit must then be '1'",
-            )
-        humidity = np.minimum(humidity, _SATURATED)
-    level_pressure = pressure[:, np.newaxis, np.newaxis]
-    return ppmv(
-        vapour_pressure(measure, np.maximum(humidity, 0.0), temperature, level_pressure), level_pressure
-    )
-
-
-def _refuse_temperatures(temperature: Float, where: str) -> None:
-    known = temperature[np.isfinite(temperature)]
-    low, high = _KELVIN_RANGE
-    if known.size and not (low <= known.min() and known.max() <= high):
-        raise InputError(
-            f"temperatures of {known.min():.1f} to {known.max():.1f} K are none of the air's",
-            where=where,
-            remedy="They look like degrees Celsius" if known.max() < 65.0 else None,
-        )
 
 
 def _above_ground(profile: Mapping[str, Float]) -> NDArray[np.bool_]:

@@ -21,7 +21,7 @@ from numpy.typing import NDArray
 
 from groundglow.errors import InputError
 from groundglow.scene.air_units import Unit, known_units, unit_of
-from groundglow.scene.analysis_open import DAMAGED
+from groundglow.scene.analysis_open import DAMAGED, first_line
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -129,7 +129,7 @@ class StoredField:
         chosen: dict[str, int | slice | NDArray[np.int64]] = {
             self.dimensions["latitude"]: latitude,
             self.dimensions["longitude"]: longitude,
-            **{name: 0 for name in _idle(self.variable, self.dimensions)},
+            **dict.fromkeys(_idle(self.variable, self.dimensions), 0),
         }
         if "time" in self.dimensions:
             chosen[self.dimensions["time"]] = time
@@ -139,7 +139,7 @@ class StoredField:
         try:
             return self.unit.converted(self.variable.isel(chosen).transpose(*order).to_numpy())
         except DAMAGED as error:
-            raise InputError(f"cannot be read ({error})", where=self.where) from error
+            raise InputError(f"cannot be read ({first_line(error)})", where=self.where) from error
 
 
 def fields_of(path: Path, datasets: Sequence[xr.Dataset]) -> dict[str, StoredField]:

@@ -6,9 +6,9 @@ file is opened.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import ExitStack, contextmanager
-from importlib.util import find_spec
+from importlib import import_module
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -35,7 +35,9 @@ def open_analysis_file(path: Path) -> Iterator[list[xr.Dataset]]:
         try:
             datasets = _opened(path, engine)
         except DAMAGED as error:
-            raise InputError(f"the file is damaged or incomplete ({error})", where=str(path)) from error
+            raise InputError(
+                f"the file is damaged or incomplete ({first_line(error)})", where=str(path)
+            ) from error
         for dataset in datasets:
             stack.callback(dataset.close)
         yield datasets
@@ -53,27 +55,31 @@ def _engine(path: Path) -> str:
     if start[:4] in (b"CDF\x01", b"CDF\x02"):
         return "scipy"
     if start == b"\x89HDF\r\n\x1a\n":
-        _require("h5netcdf", "NetCDF 4", "netcdf", path)
+        _require(("h5py", "h5netcdf"), "NetCDF 4", "netcdf", path)
         return "h5netcdf"
     if start[:4] == b"GRIB":
-        _require("cfgrib", "GRIB", "grib", path)
+        _require(("eccodes", "cfgrib"), "GRIB", "grib", path)
         return "cfgrib"
     raise InputError(
         "is neither NetCDF nor GRIB", where=str(path), remedy="Give an analysis on pressure levels as NetCDF"
     )
 
 
-def _require(module: str, format_name: str, extra: str, path: Path) -> None:
-    try:
-        found = find_spec(module) is not None
-    except ValueError:  # barred from being imported
-        found = False
-    if not found:
-        raise InputError(
-            f"is {format_name}, and {module}, which reads it, is not installed",
-            where=str(path),
-            remedy=f"Install groundglow[{extra}]",
-        )
+def _require(modules: Sequence[str], format_name: str, extra: str, path: Path) -> None:
+    for module in modules:
+        try:
+            import_module(module)
+        except (ImportError, RuntimeError, OSError) as error:  # the module itself, or the library under it
+            raise InputError(
+                f"is {format_name}, and {module}, which reads it, is not installed",
+                where=str(path),
+                remedy=f"Install groundglow[{extra}]",
+            ) from error
+
+
+def first_line(error: Exception) -> str:
+    """What a library says is wrong, in one line."""
+    return next(iter(str(error).splitlines()), type(error).__name__)
 
 
 def _opened(path: Path, engine: str) -> list[xr.Dataset]:

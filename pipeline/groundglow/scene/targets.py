@@ -170,7 +170,8 @@ def _check(targets: Sequence[TargetRadiance]) -> None:
         numbers = (target.observed, target.expected, target.uncertainty)
         if not all(np.isfinite(numbers)) or min(numbers) <= 0.0:
             raise DomainError(
-                f"the target {target.name!r} needs observed and expected radiance and uncertainty above 0, found {numbers}"
+                f"the target {target.name!r} needs observed and expected radiance and their uncertainty "
+                f"above 0, found {numbers}"
             )
 
 
@@ -181,7 +182,7 @@ def _with_gain(
     if np.ptp(observed) < 1e-6 * observed.max():
         return None, None
     design = np.stack([observed / sigma, 1.0 / sigma], axis=1)
-    covariance = np.linalg.inv(design.T @ design)
+    covariance: NDArray[np.float64] = np.linalg.inv(design.T @ design).astype(np.float64)
     return covariance @ design.T @ (expected / sigma), covariance
 
 
