@@ -116,7 +116,8 @@ class Analysis:
         rows = slice(min(c.row for c in corners), max(c.row for c in corners) + 2)
         columns = slice(min(c.column for c in corners), max(c.column for c in corners) + 2)
         window = mixed(
-            [(read_window(self.fields, self.lattice, time, rows, columns), share) for time, share in shares]
+            [(read_window(self.fields, self.lattice, time, rows, columns), share) for time, share in shares],
+            where=self.names,
         )
         note = f"analysis {self.names} at {_told(when)}"
         return [

@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
 # What the libraries raise for files that are damaged or not what their first bytes promise.
 DAMAGED = (OSError, EOFError, ValueError, TypeError, KeyError, IndexError, RuntimeError)
+_MAPPED = 1 << 30  # bytes
 
 
 @contextmanager
@@ -33,7 +34,7 @@ def open_analysis_file(path: Path) -> Iterator[list[xr.Dataset]]:
     engine = _engine(path)
     with ExitStack() as stack:
         try:
-            datasets = _opened(path, engine)
+            datasets = _opened(path, engine, stack)
         except DAMAGED as error:
             raise InputError(
                 f"the file is damaged or incomplete ({first_line(error)})", where=str(path)
@@ -55,10 +56,10 @@ def _engine(path: Path) -> str:
     if start[:4] in (b"CDF\x01", b"CDF\x02"):
         return "scipy"
     if start == b"\x89HDF\r\n\x1a\n":
-        _require(("h5py", "h5netcdf"), "NetCDF 4", "netcdf", path)
+        _require(("h5netcdf", "h5py"), "NetCDF 4", "netcdf", path)
         return "h5netcdf"
     if start[:4] == b"GRIB":
-        _require(("eccodes", "cfgrib"), "GRIB", "grib", path)
+        _require(("cfgrib",), "GRIB", "grib", path)
         return "cfgrib"
     raise InputError(
         "is neither NetCDF nor GRIB", where=str(path), remedy="Give an analysis on pressure levels as NetCDF"
@@ -82,7 +83,7 @@ def first_line(error: Exception) -> str:
     return next(iter(str(error).splitlines()), type(error).__name__)
 
 
-def _opened(path: Path, engine: str) -> list[xr.Dataset]:
+def _opened(path: Path, engine: str, stack: ExitStack) -> list[xr.Dataset]:
     if engine == "cfgrib":
         import cfgrib  # noqa: PLC0415  (an extra, and slow to import)
 
@@ -90,4 +91,10 @@ def _opened(path: Path, engine: str) -> list[xr.Dataset]:
         return list(cfgrib.open_datasets(str(path), backend_kwargs={"indexpath": ""}))
     import xarray as xr  # noqa: PLC0415  (slow to import, and needed for analyses only)
 
+    if engine == "scipy":
+        # A mapped file that proves damaged cannot be closed; only large ones are mapped.
+        stream = stack.enter_context(path.open("rb"))
+        return [
+            xr.open_dataset(stream, engine=engine, mmap=path.stat().st_size > _MAPPED, decode_timedelta=False)
+        ]
     return [xr.open_dataset(path, engine=engine, decode_timedelta=False)]

@@ -78,13 +78,15 @@ def read_window(
     return found
 
 
-def mixed(parts: Sequence[tuple[Mapping[str, Float], float]]) -> dict[str, Float]:
+def mixed(parts: Sequence[tuple[Mapping[str, Float], float]], *, where: str) -> dict[str, Float]:
     """Weighted mean of windows, of what all of them hold.
 
     Parameters
     ----------
     parts : sequence of (window, weight)
         The weights add up to one.
+    where : str
+        The files, for messages.
 
     Raises
     ------
@@ -94,7 +96,7 @@ def mixed(parts: Sequence[tuple[Mapping[str, Float], float]]) -> dict[str, Float
     first = parts[0][0]
     for window, _ in parts[1:]:
         if not np.array_equal(window["pressure"], first["pressure"]):
-            raise InputError("the pressure levels differ from time to time")
+            raise InputError("the pressure levels differ from time to time", where=where)
     return {
         role: np.sum([share * window[role] for window, share in parts], axis=0)
         for role in first
