@@ -66,6 +66,37 @@ class RadianceAdjustment:
     source: str = ""
 
 
+@dataclass(frozen=True)
+class KnownTarget:
+    """A place whose temperature was measured while the scene was taken.
+
+    Attributes
+    ----------
+    name : str
+        For the record: "lake", "reference panel".
+    band : str
+        Number of the thermal band that it corrects.
+    x, y : float
+        Centre, in the reference system of the band's raster.
+    radius : float
+        Pixels whose centres lie this near are averaged. [unit of the reference system]
+    temperature, temperature_uncertainty : float
+        [K]
+    emissivity, emissivity_uncertainty : float
+        In the band.
+    """
+
+    name: str
+    band: str
+    x: float
+    y: float
+    radius: float
+    temperature: float
+    temperature_uncertainty: float
+    emissivity: float
+    emissivity_uncertainty: float
+
+
 @dataclass(frozen=True, eq=False)
 class ThermalBand:
     """One thermal band of a scene.
@@ -155,6 +186,8 @@ class Scene:
         Keys "red" and "near_infrared".
     emissivity : mapping of str to EmissivityRaster
         By thermal band number.
+    targets : tuple of KnownTarget
+        Places of known temperature, to which radiance is corrected.
     origin : str
         The description it came from.
     notes : tuple of str
@@ -173,6 +206,7 @@ class Scene:
     quality: QualityRaster | None = None
     reflectance: Mapping[str, Reflectance] = field(default_factory=dict)
     emissivity: Mapping[str, EmissivityRaster] = field(default_factory=dict)
+    targets: tuple[KnownTarget, ...] = ()
     origin: str = ""
     notes: tuple[str, ...] = ()
 

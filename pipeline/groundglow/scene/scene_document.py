@@ -162,6 +162,23 @@ class EmissivityDocument(RasterDocument):
     uncertainty: float | None = Field(None, ge=0.0, le=1.0, description="Standard uncertainty.")
 
 
+class TargetDocument(Document):
+    """A place of known temperature, to which a band's radiance is corrected."""
+
+    name: str = Field(min_length=1, description="For the record, for example lake or reference panel.")
+    band: str = Field(description="Number of the thermal band.")
+    at: tuple[float, float] = Field(
+        description="x and y of its centre in the thermal raster's reference system."
+    )
+    radius: float = Field(
+        0.0, ge=0.0, description="Pixels this near are averaged; 0 takes the one pixel. [map unit]"
+    )
+    temperature: Kelvin = Field(description="Measured surface temperature. [K]")
+    temperature_uncertainty: float = Field(0.5, gt=0.0, le=20.0, description="One standard uncertainty. [K]")
+    emissivity: float = Field(gt=0.0, le=1.0, description="Emissivity in the band.")
+    emissivity_uncertainty: float = Field(0.01, ge=0.0, le=0.5, description="One standard uncertainty.")
+
+
 class QualityDocument(Document):
     """The agency's quality raster."""
 
@@ -233,6 +250,9 @@ class SceneDocument(Document):
     quality: QualityDocument | None = Field(None, description="Quality raster.")
     reflectance: ReflectancePairDocument | None = Field(None, description="Bands of a vegetation index.")
     emissivity: tuple[EmissivityDocument, ...] = Field((), description="Emissivity rasters.")
+    target: tuple[TargetDocument, ...] = Field(
+        (), description="Places of known temperature, to which radiance is corrected: for cameras that drift."
+    )
 
     @model_validator(mode="after")
     def _each_band_once(self) -> SceneDocument:
@@ -241,6 +261,7 @@ class SceneDocument(Document):
             twice = sorted({number for number in numbers if numbers.count(number) > 1})
             if twice:
                 raise ValueError(f"{table} band {', '.join(map(repr, twice))} is named twice")
+        self._check_targets()
         for name, band in self.reflective_bands().items():
             if band.sun_corrected:
                 continue
@@ -250,6 +271,22 @@ class SceneDocument(Document):
                     f"reflectance.{name} is not corrected for the sun and needs a sun_elevation above 0"
                 )
         return self
+
+    def _check_targets(self) -> None:
+        """Targets belong to bands of the scene that carry no correction yet, each named once."""
+        bands = {band.band: band for band in self.thermal}
+        names = [(target.band, target.name) for target in self.target]
+        for target in self.target:
+            if target.band not in bands:
+                raise ValueError(
+                    f"target {target.name!r} belongs to band {target.band!r}, which is not in the scene"
+                )
+            if bands[target.band].radiance_adjustment is not None:
+                raise ValueError(
+                    f"thermal band {target.band!r} has both a radiance_adjustment and targets: keep one of them"
+                )
+            if names.count((target.band, target.name)) > 1:
+                raise ValueError(f"target {target.name!r} is named twice for band {target.band!r}")
 
     def reflective_bands(self) -> dict[str, ReflectanceDocument]:
         """The bands of the vegetation index that are given, by name."""

@@ -13,6 +13,7 @@ from groundglow.scene.geometry import ZenithAtSurface, zenith_at_surface
 from groundglow.scene.model import (
     CameraSettings,
     EmissivityRaster,
+    KnownTarget,
     QualityRaster,
     RadianceAdjustment,
     Reflectance,
@@ -26,6 +27,7 @@ from groundglow.scene.scene_document import (
     RasterDocument,
     ReflectanceDocument,
     SceneDocument,
+    TargetDocument,
     ThermalDocument,
 )
 from groundglow.scene.sensor import load_sensor
@@ -88,6 +90,7 @@ def _scene(document: SceneDocument, path: Path) -> Scene:
         quality=_quality(document.quality, sensor, folder) if document.quality else None,
         reflectance=reflectance,
         emissivity=emissivity,
+        targets=tuple(_target(target) for target in document.target),
         origin=str(path),
     )
 
@@ -176,6 +179,12 @@ def _reflectance(band: ReflectanceDocument, document: SceneDocument, folder: Pat
         sun_elevation=own if own is not None else document.scene.sun_elevation,
         acquired=band.acquired or document.scene.acquired,
     )
+
+
+def _target(document: TargetDocument) -> KnownTarget:
+    """A place of known temperature."""
+    x, y = document.at
+    return KnownTarget(x=x, y=y, **document.model_dump(exclude={"at"}))
 
 
 def _quality(document: QualityDocument, sensor: Sensor, folder: Path) -> QualityRaster:
