@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from functools import partial
 from pathlib import Path
 from typing import Any, Literal
@@ -10,15 +10,13 @@ from typing import Any, Literal
 import dask.array as da
 import numpy as np
 import xarray as xr
-from dask.base import compute
-from dask.delayed import delayed
 from numpy.typing import NDArray
 
 from groundglow.errors import InputError
-from groundglow.layers.encode import encode_block
+from groundglow.layers.encode import EncodedBlock, encode_block
 from groundglow.layers.files import output_errors
 from groundglow.layers.geotiff import LayerSummary, LayerWriter
-from groundglow.layers.layer_format import format_of
+from groundglow.layers.layer_format import LayerFormat, format_of
 from groundglow.layers.tags import text_of
 from groundglow.quantities import QUANTITIES
 from groundglow.raster.band import RasterSource
@@ -130,15 +128,9 @@ def write_layers(
             name: LayerWriter(folder / f"{name}.tif", grid, formats[name], text_of(name)) for name in chosen
         }
         try:
-            blocks = list(grid.blocks(_BLOCK))
-            for first in range(0, len(blocks), _AT_ONCE):
-                tasks = [
-                    {name: _encoded(dataset[name], block, grid, formats[name]) for name in chosen}
-                    for block in blocks[first : first + _AT_ONCE]
-                ]
-                for encoded in compute(*tasks):
-                    for name, part in encoded.items():
-                        writers[name].add(part)
+            for encoded in _encoded_blocks(dataset, grid, formats):
+                for name, part in encoded.items():
+                    writers[name].add(part)
             found = {name: writer.finish() for name, writer in writers.items()}
         finally:
             for writer in writers.values():
@@ -146,14 +138,39 @@ def write_layers(
     return found
 
 
-def _encoded(values: xr.DataArray, block: Block, grid: Grid, layer_format: Any) -> Any:
-    """The encoded pixels of one block, or the promise of them."""
-    rows = slice(block.row, block.row + block.height)
-    columns = slice(block.column, block.column + block.width)
-    part = values.data[rows, columns]
-    if isinstance(part, da.Array):
-        return delayed(encode_block)(part, block, grid, layer_format)
-    return encode_block(np.ascontiguousarray(part), block, grid, layer_format)
+def _encoded_blocks(
+    dataset: xr.Dataset, grid: Grid, formats: Mapping[str, LayerFormat]
+) -> Iterator[dict[str, EncodedBlock]]:
+    """All layers of one block after the other, some blocks computed together where they are lazy."""
+    edges = da.core.normalize_chunks(_BLOCK, grid.shape)
+    arrays = [da.asarray(dataset[name].data).rechunk(edges) for name in formats]
+    promised = da.map_blocks(
+        _encode,
+        *arrays,
+        grid=grid,
+        formats=formats,
+        dtype=object,
+        meta=np.empty((0, 0), object),
+        chunks=(1, 1),
+    )
+    rows, columns = promised.numblocks
+    at_once = max(1, _AT_ONCE // columns)
+    for first in range(0, rows, at_once):
+        yield from promised.blocks[first : first + at_once].compute().ravel()
+
+
+def _encode(
+    *pixels: NDArray[Any], grid: Grid, formats: Mapping[str, LayerFormat], block_info: Any = None
+) -> NDArray[Any]:
+    """The encoded layers of one block, as the one element of an array."""
+    rows, columns = block_info[0]["array-location"]
+    block = Block(rows[0], columns[0], rows[1] - rows[0], columns[1] - columns[0])
+    found = np.empty((1, 1), dtype=object)
+    found[0, 0] = {
+        name: encode_block(np.require(values, requirements=["C", "W"]), block, grid, formats[name])
+        for name, values in zip(formats, pixels, strict=True)
+    }
+    return found
 
 
 def _opened(reader: Reader, grid: Grid, chunks: Chunks, outputs: Sequence[Output]) -> Sequence[Any]:

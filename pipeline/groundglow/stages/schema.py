@@ -48,8 +48,8 @@ def require(dataset: xr.Dataset, **units: str) -> None:
         raise InputError(
             "; ".join(faults),
             where="Dataset",
-            remedy="Run the stages before, or set attributes: xarray drops them in arithmetic unless told "
-            "xarray.set_options(keep_attrs=True)",
+            remedy="Run the stages before; where a function of your own dropped attributes, give them back with "
+            "assign_attrs",
         )
 
 
