@@ -176,15 +176,14 @@ def test_no_value_and_impossible_values_give_no_value(
         assert np.isnan(getattr(found, name)).tolist() == [True, False]
 
 
-def test_the_parabola_passes_through_its_nodes_and_is_kept_beyond_them() -> None:
+def test_the_parabola_passes_through_its_nodes_and_has_the_slope_it_states() -> None:
     air = Air(np.array([0.70, 0.72, 0.73]), np.array(1.0), np.array(1.0), np.array([260.0, 300.0, 350.0]))
-    at = np.array([200.0, 260.0, 300.0, 350.0, 900.0])
-    value, slope = transmittance_at(air, at)
-    assert value == pytest.approx([0.70, 0.70, 0.72, 0.73, 0.73], abs=1e-12)
-    assert slope[[0, 4]].tolist() == [0.0, 0.0]
-    inner = np.array([265.0, 290.0, 340.0])
-    upper, lower = (transmittance_at(air, inner + sign)[0] for sign in (1e-3, -1e-3))
-    assert transmittance_at(air, inner)[1] == pytest.approx((upper - lower) / 2e-3, rel=1e-6)
+    assert transmittance_at(air, np.array([260.0, 300.0, 350.0]))[0] == pytest.approx(
+        [0.70, 0.72, 0.73], abs=1e-12
+    )
+    at = np.array([230.0, 265.0, 290.0, 340.0, 500.0])
+    upper, lower = (transmittance_at(air, at + sign)[0] for sign in (1e-3, -1e-3))
+    assert transmittance_at(air, at)[1] == pytest.approx((upper - lower) / 2e-3, rel=1e-6)
 
 
 def invented_air(wavelength: Float) -> tuple[Float, Float, Float]:
@@ -212,7 +211,8 @@ def test_wide_bands_within_a_twentieth_of_a_kelvin_of_the_full_spectral_integral
     band = RESPONSES[name]
     wavelength = band.quadrature_wavelength
     transmittance, path, sky = invented_air(wavelength)
-    truth = np.linspace(250.0, 340.0, 19)
+    # Well beyond the nodes too: over snow, and over ground that no sun heats.
+    truth = np.concatenate([[210.0, 230.0], np.linspace(250.0, 340.0, 19), [370.0, 400.0]])
     emissivity = 0.95
     leaving = emissivity * spectral_radiance(wavelength, truth[:, np.newaxis]) + (1.0 - emissivity) * sky
     radiance = band.average(transmittance * leaving + path)
@@ -230,7 +230,8 @@ def test_wide_bands_within_a_twentieth_of_a_kelvin_of_the_full_spectral_integral
     # The response is the derivative of what the sensor sees.
     step = radiance[1:] - radiance[:-1]
     middle = 0.5 * (found.response[1:] + found.response[:-1])
-    assert middle * np.diff(truth) == pytest.approx(step, rel=0.01)
+    warm = slice(2, -2)
+    assert (middle * np.diff(truth))[warm] == pytest.approx(step[warm], rel=0.01)
 
 
 def test_an_air_that_does_not_fit_its_nodes_is_refused() -> None:

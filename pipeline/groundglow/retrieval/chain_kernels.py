@@ -92,20 +92,15 @@ def flag_radiance(
 def _transmittance_at(
     air: Pixels, i: int, j: int, temperature: np.float32, nodes: Pixels
 ) -> tuple[np.float32, np.float32]:
-    """Quadratic through three surface temperatures: the transmittance and its slope."""
-    x = temperature
-    x = max(x, nodes[0])
-    x = min(x, nodes[2])
+    """Parabola through three reciprocal surface temperatures: the transmittance and its slope."""
+    x = _ONE / temperature
     h1 = nodes[1] - nodes[0]
     h2 = nodes[2] - nodes[1]
     d1 = (air[1, i, j] - air[0, i, j]) / h1
     d2 = (air[2, i, j] - air[1, i, j]) / h2
     curve = (d2 - d1) / (h1 + h2)
     value = air[0, i, j] + (x - nodes[0]) * (d1 + curve * (x - nodes[1]))
-    inclination = d1 + curve * ((x - nodes[0]) + (x - nodes[1]))
-    if x != temperature:
-        inclination = _ZERO
-    return value, inclination
+    return value, -x * x * (d1 + curve * ((x - nodes[0]) + (x - nodes[1])))
 
 
 @kernel(
@@ -136,6 +131,9 @@ def surface_temperature(
     dL/dT = eps d(t B)/dT. Statement: ``retrieval.single_channel.invert``.
     """
     count = weighting.shape[0]
+    nodes = np.empty(count, dtype=np.float32)
+    for k in range(count):
+        nodes[k] = _ONE / weighting[k]
     bits = np.empty(1, dtype=np.float32)
     key = bits.view(np.int32)
     for i in range(radiance.shape[0]):
@@ -166,7 +164,7 @@ def surface_temperature(
                 gradient = slope[cell]
                 found = temperature[cell] + gradient * (source - start[cell])
                 if count == 3:
-                    t, inclination = _transmittance_at(air, i, j, found, weighting)
+                    t, inclination = _transmittance_at(air, i, j, found, nodes)
             if np.isnan(found):
                 flags[i, j] |= _IMPOSSIBLE
                 continue

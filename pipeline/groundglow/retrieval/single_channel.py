@@ -179,7 +179,8 @@ def radiance_at_sensor(
 def transmittance_at(air: Air, temperature: ArrayLike) -> tuple[Float, Float]:
     """Transmittance for a surface of that temperature, and its slope.
 
-    A parabola through the three nodes; beyond the outer ones their value is kept, with slope 0.
+    A parabola in the reciprocal of the temperature through the three nodes. Planck's law weights the
+    wavelengths by it, so the parabola also holds far beyond the nodes, over fires as over snow.
 
     Parameters
     ----------
@@ -197,13 +198,13 @@ def transmittance_at(air: Air, temperature: ArrayLike) -> tuple[Float, Float]:
     kelvin = np.asarray(temperature, dtype=np.float64)
     if t.shape[0] == 1:
         return t[0], np.zeros(np.broadcast_shapes(t[0].shape, kelvin.shape))
-    low, middle, high = (float(node) for node in air.surface_temperature)
-    x = np.clip(kelvin, low, high)
+    low, middle, high = (1.0 / float(node) for node in air.surface_temperature)
+    x = 1.0 / kelvin
     first = (t[1] - t[0]) / (middle - low)
     curve = ((t[2] - t[1]) / (high - middle) - first) / (high - low)
     value = t[0] + (x - low) * (first + curve * (x - middle))
-    slope = first + curve * ((x - low) + (x - middle))
-    return value, np.where(x == kelvin, slope, np.where(np.isnan(kelvin), np.nan, 0.0))
+    slope = -x * x * (first + curve * ((x - low) + (x - middle)))
+    return value, slope
 
 
 def invert(radiance: ArrayLike, emissivity: ArrayLike, air: Air, inverse: Inverse) -> Inversion:
