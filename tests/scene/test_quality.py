@@ -56,7 +56,9 @@ def test_words_before_the_collections() -> None:
     assert names(61440, rules) == {"cloud", "thin_cloud"}
     assert names(53248, rules) == {"cloud"}
     assert names(28672, rules) == {"thin_cloud"}
-    assert names(20512, rules) == {"water"}
+    assert names(20512, rules) == set()
+    assert names(20528, rules) == {"water"}
+    assert names(36864, rules) == {"near_cloud"}
     assert names(1, rules) == {"no_data"}
 
 
