@@ -45,6 +45,7 @@ def test_an_archive_reads_like_its_folder(name: str, inside: str, tmp_path: Path
     for one, other in zip(plain.sources(), archived.sources(), strict=True):
         assert other.indirect
         assert read_all(other, GRID).values.tobytes() == read_all(one, GRID).values.tobytes()
+    assert {file.name for file in tmp_path.iterdir()} == {"folder", name}
 
 
 def test_an_archive_stands_for_its_members_in_the_provenance(tmp_path: Path) -> None:

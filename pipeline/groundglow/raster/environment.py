@@ -17,6 +17,8 @@ _OPTIONS = {
     "GDAL_DISABLE_READDIR_ON_OPEN": "TRUE",
     "GDAL_HTTP_MAX_RETRY": "3",
     "GDAL_HTTP_RETRY_DELAY": "1",
+    # Reading a compressed archive must not leave a note of its size beside it.
+    "CPL_VSIL_GZIP_WRITE_PROPERTIES": "NO",
     # A server that stalls must not hold a night's run: give up on silence, not on slowness.
     "GDAL_HTTP_CONNECTTIMEOUT": "20",
     "GDAL_HTTP_LOW_SPEED_TIME": "30",
