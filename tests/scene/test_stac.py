@@ -345,8 +345,12 @@ def test_what_is_missing_is_asked_for_by_name(folder: Path) -> None:
     item = new_style()
     item["assets"]["lwir11"]["bands"] = [{"eo:common_name": "lwir11"}]
     with pytest.raises(
-        InputError, match="asset 'lwir11' does not say what its numbers are: unit, scale and offset"
+        InputError, match="asset 'lwir11' does not say what its numbers are: unit, scale, offset"
     ):
+        open_scene(saved(folder, item))
+    item = new_style()
+    del item["assets"]["lwir11"]["bands"][0]["unit"]
+    with pytest.raises(InputError, match="does not say what its numbers are: unit missing"):
         open_scene(saved(folder, item))
     item = new_style()
     del item["assets"]["lwir11"], item["assets"]["lwir12"]
@@ -384,3 +388,18 @@ def test_addresses_that_are_not_fetched() -> None:
         open_scene("ftp://127.0.0.1/item.json")
     with pytest.raises(InputError, match="cannot be fetched"):
         open_scene("http://127.0.0.1:9/item.json")
+
+
+@pytest.mark.parametrize("name", ["b10.vrt", "b10.tif"])
+def test_an_asset_must_not_make_gdal_read_other_files(name: str, folder: Path) -> None:
+    (folder / name).unlink(missing_ok=True)
+    (folder / name).write_text(
+        '<VRTDataset rasterXSize="60" rasterYSize="50"><VRTRasterBand dataType="UInt16" band="1"><SimpleSource>'
+        "<SourceFilename>/etc/passwd</SourceFilename></SimpleSource></VRTRasterBand></VRTDataset>"
+    )
+    item = new_style()
+    item["assets"]["lwir11"]["href"] = name
+    with pytest.raises(
+        InputError, match="makes GDAL read other files, which is refused because another file named it"
+    ):
+        open_scene(saved(folder, item))

@@ -134,7 +134,7 @@ def _thermal_band(
         saturation=None if is_temperature else _LARGEST_COUNT.get(band.data_type),
         indirect=True,
     )
-    if not unit and band.scale is None:
+    if not unit:
         source = _with_standard_counts(source, band, known, where)
     return ThermalBand(
         number=known.number,
@@ -149,11 +149,13 @@ def _with_standard_counts(
     source: RasterSource, band: AssetBand, known: SensorBand, where: str
 ) -> RasterSource:
     """The sensor's standard scaling for an asset that says nothing of its numbers."""
-    if known.counts is None:
+    if known.counts is None or band.scale is not None:
+        told = (("unit", None), ("scale", band.scale), ("offset", band.offset))
+        missing = [name for name, value in told if value is None]
         raise InputError(
-            f"asset {band.key!r} does not say what its numbers are: unit, scale and offset are missing",
+            f"asset {band.key!r} does not say what its numbers are: {', '.join(missing)} missing",
             where=where,
-            remedy="Add unit, raster:scale and raster:offset to the band",
+            remedy="Add unit, raster:scale and raster:offset to the band, or name the scene's level-1 metadata instead",
         )
     counts = known.counts
     return replace(
