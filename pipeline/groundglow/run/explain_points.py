@@ -79,6 +79,8 @@ def read_points(path: Path, *, lonlat: bool) -> list[Point]:
     points = []
     for number, row in enumerate(rows, start=2):
         x, y = (_number(row.get(known[str(chosen[axis])]), path, number) for axis in ("x", "y"))
+        if degrees and (fault := _off_the_globe(x, y)):
+            raise InputError(fault, where=f"{path}, line {number}")
         name = row.get(known["name"], "") if "name" in known else ""
         points.append(Point(x, y, degrees, (name or "").strip() or f"line {number}"))
     return points
@@ -98,6 +100,8 @@ def one_point(x: float | None, y: float | None, *, lonlat: bool) -> Point:
         )
     if not (math.isfinite(x) and math.isfinite(y)):
         raise ConfigError(f"coordinates must be finite numbers, not {x}, {y}", where="explain")
+    if lonlat and (fault := _off_the_globe(x, y)):
+        raise ConfigError(fault, where="explain", remedy="Longitude comes first, both in degrees")
     return Point(x, y, lonlat)
 
 
@@ -124,6 +128,15 @@ def outside(points: Sequence[Point], grids: Sequence[tuple[str, Grid]]) -> Input
     )
 
 
+def _off_the_globe(longitude: float, latitude: float) -> str | None:
+    """What is wrong with degrees, which the coordinate library would refuse in words of its own."""
+    if abs(latitude) > 90.0:
+        return f"a latitude lies between -90 and 90 degrees, not at {latitude:g}"
+    if abs(longitude) > 360.0:
+        return f"a longitude lies between -180 and 360 degrees, not at {longitude:g}"
+    return None
+
+
 def _number(text: str | None, path: Path, line: int) -> float:
     try:
         value = float((text or "").strip())
@@ -137,13 +150,9 @@ def _number(text: str | None, path: Path, line: int) -> float:
 def _map_coordinates(point: Point, grid: Grid) -> tuple[float, float]:
     if not point.lonlat:
         return point.x, point.y
-    from rasterio.errors import RasterioError  # noqa: PLC0415  (needed for degrees only)
-    from rasterio.warp import transform  # noqa: PLC0415
+    from rasterio.warp import transform  # noqa: PLC0415  (needed for degrees only)
 
-    try:
-        (x,), (y,) = transform("EPSG:4326", grid.crs, [point.x], [point.y])
-    except RasterioError:
-        return math.nan, math.nan
+    (x,), (y,) = transform("EPSG:4326", grid.crs, [point.x], [point.y])
     return float(x), float(y)
 
 
