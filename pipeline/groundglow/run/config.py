@@ -17,6 +17,7 @@ from groundglow.quantities import DEFAULT_MASK, FLAG, QUANTITIES
 from groundglow.run.config_atmosphere import Atmosphere
 from groundglow.run.config_batch import Retry, Select
 from groundglow.run.config_emissivity import Emissivity
+from groundglow.run.config_grid import AreaOfInterest, TargetGrid
 from groundglow.run.measures import Kelvin, Metres
 
 # What `layers.write` may name; "quality" is always written, since every other layer needs it.
@@ -128,6 +129,10 @@ class Job(Document):
     atmosphere: Atmosphere
     quality: Quality = Field(default_factory=Quality)
     layers: Layers = Field(default_factory=Layers)
+    grid: TargetGrid | None = Field(None, description="Grid of the results; default: the thermal band's own.")
+    area: AreaOfInterest | None = Field(
+        None, description="Part of the scene that is wanted; default: all of it."
+    )
     compare: dict[str, str] = Field(
         default_factory=dict,
         description="Rasters of known values by layer name; the run reports the map's error against them.",

@@ -3,9 +3,13 @@
 from __future__ import annotations
 
 import math
+from functools import partial
 from pathlib import Path
 
+import numpy as np
+
 from groundglow.errors import ConfigError, InputError
+from groundglow.quantities import FLAG
 from groundglow.raster.grid import Grid
 from groundglow.retrieval.emissivity import given_ground, ground_of_class
 from groundglow.retrieval.emissivity_broadband import relation
@@ -41,6 +45,7 @@ from groundglow.run.emissivity_source import (
 )
 from groundglow.run.ground_size import pixel_in_metres
 from groundglow.scene.model import Scene, ThermalBand
+from groundglow.scene.quality_read import read_flags
 
 _RASTER_UNCERTAINTY = 0.02
 _SECONDS_A_DAY = 86_400.0
@@ -173,16 +178,7 @@ def _index(
             None if red is None else [0.1], None if near_infrared is None else [0.1]
         )  # names the missing one
         raise AssertionError("a missing band was not refused")
-    held = sample([red, near_infrared], grid)
-    for name, values, source in zip(("red", "near_infrared"), held, (red, near_infrared), strict=True):
-        if not any(math.isfinite(value) for value in values[:: max(1, values.size // 20_000)]):
-            raise InputError(
-                f"the {name} band has no value where the scene lies",
-                where=source.source.path,
-                remedy="Check that it belongs to this scene; a night scene needs bands of another date",
-            )
-        check_reflectance(values, band=name, where=source.source.path)
-    check_index_bands(held[0], held[1])
+    _check_sample(scene, red, near_infrared, grid)
     age = _age_in_days(scene)
     response = band.sensor_band.response
     method: ThresholdMethod | LogarithmicMethod
@@ -202,6 +198,24 @@ def _index(
     }
     footprint = _footprint(scene, grid, smooth=chosen.smooth)
     return IndexEmissivitySource(red, near_infrared, method, scene.quality, footprint, account)
+
+
+def _check_sample(scene: Scene, red: ReflectanceSource, near_infrared: ReflectanceSource, grid: Grid) -> None:
+    """Refuse bands that hold nothing, percent or counts, or stand in each other's place."""
+    held = sample([red.read, near_infrared.read], grid)
+    for name, values, source in zip(("red", "near_infrared"), held, (red, near_infrared), strict=True):
+        if not np.isfinite(values).any():
+            raise InputError(
+                f"the {name} band has no value where the scene lies",
+                where=source.source.path,
+                remedy="Check that it belongs to this scene; a night scene needs bands of another date",
+            )
+        check_reflectance(values, band=name, where=source.source.path)
+    water = None
+    if scene.quality is not None:
+        (flags,) = sample([partial(read_flags, scene.quality)], grid)
+        water = (flags & (FLAG["water"].mask | FLAG["snow"].mask)) != 0
+    check_index_bands(held[0], held[1], water=water)
 
 
 def _reflectance(scene: Scene, name: str) -> ReflectanceSource | None:

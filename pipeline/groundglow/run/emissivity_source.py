@@ -7,9 +7,9 @@ the sensor's native footprint, since the sensor saw no sharper picture.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, fields
-from typing import Protocol
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -31,7 +31,7 @@ from groundglow.retrieval.emissivity_logarithmic import LogarithmicMethod
 from groundglow.retrieval.emissivity_smoothing import smooth_fields
 from groundglow.retrieval.emissivity_threshold import ThresholdMethod
 from groundglow.scene.model import QualityRaster
-from groundglow.scene.quality import flags_of_codes
+from groundglow.scene.quality_read import read_flags
 
 Float = NDArray[np.float64]
 Flags = NDArray[np.uint16]
@@ -277,8 +277,7 @@ class IndexEmissivitySource:
     def _read(self, grid: Grid, block: Block) -> EmissivityFields:
         flags = np.zeros((block.height, block.width), np.uint16)
         if self.quality is not None:
-            words = read_codes(self.quality.source, grid, block, resampling="majority")
-            flags = np.where(words.valid, flags_of_codes(words.codes, self.quality.rules), np.uint16(0))
+            flags = read_flags(self.quality, grid, block)
         return index_fields(
             self.red.read(grid, block), self.near_infrared.read(grid, block), flags, self.method
         )
@@ -323,13 +322,15 @@ def _padded(given: EmissivityFields, margins: Sequence[tuple[int, int]]) -> Emis
     return EmissivityFields(*arrays)
 
 
-def sample(read: Sequence[ReflectanceSource], grid: Grid, size: int = 128) -> list[Pixels]:
-    """Pixels of each band at nine places of the grid, for a look at what the rasters hold.
+def sample(
+    read: Sequence[Callable[[Grid, Block], NDArray[Any]]], grid: Grid, size: int = 128
+) -> list[NDArray[Any]]:
+    """Pixels of each input at nine places of the grid, for a look at what the rasters hold.
 
     Raises
     ------
     InputError
-        If a band cannot be read.
+        If an input cannot be read.
     """
     blocks = []
     for row in (1, 5, 9):
@@ -338,4 +339,4 @@ def sample(read: Sequence[ReflectanceSource], grid: Grid, size: int = 128) -> li
             left = min(grid.width * column // 10, max(grid.width - size, 0))
             height, width = min(size, grid.height - top), min(size, grid.width - left)
             blocks.append(Block(top, left, height, width))
-    return [np.concatenate([one.read(grid, block).ravel() for block in blocks]) for one in read]
+    return [np.concatenate([one(grid, block).ravel() for block in blocks]) for one in read]

@@ -2,24 +2,27 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
 
-from groundglow.atmosphere.interpolate import pack
+from groundglow.atmosphere.interpolate import AirStack, pack
 from groundglow.errors import ConfigError
 from groundglow.layers.layer_format import LayerFormat, format_of
 from groundglow.layers.scale import TemperatureUnit
 from groundglow.quantities import FLAG
 from groundglow.raster.band import RasterSource
-from groundglow.raster.grid import Block
+from groundglow.raster.grid import Block, Grid
 from groundglow.raster.open import describe_raster
+from groundglow.retrieval.uncertainty import independent_footprints
 from groundglow.run.air_source import Air, air_of_job
 from groundglow.run.column_choice import column_account, column_of_job
 from groundglow.run.config import NEEDS_SKY_FLUX, Job
 from groundglow.run.emissivity_choice import emissivity_of_job
+from groundglow.run.grid_choice import grid_of_job
 from groundglow.run.ground_size import pixel_in_metres
 from groundglow.run.input_checks import check_inputs
 from groundglow.run.radiometry import chain_settings, radiance_conversion
@@ -123,14 +126,17 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
     """
     band = _chosen_band(job, scene)
     info = describe_raster(band.source.path, indirect=band.source.indirect)
-    grid = info.grid
-    check_inputs([("thermal", band.source)], grid)
+    check_inputs([("thermal", band.source)], info.grid)
+    grid, area = grid_of_job(job, folder, info.grid)
     wants_flux = any(name in NEEDS_SKY_FLUX for name in job.layers.write)
     air = air_of_job(job.atmosphere, scene, band, grid, folder, sky_flux=wants_flux)
     weighting = air.grid.surface_temperature if air is not None else np.array([300.0])
     step = _quantisation_step(band, info.dtypes[band.source.band - 1], info.scales[band.source.band - 1])
     causes = len(air.grid.causes) if air is not None else 0
+    stack = pack(air.grid) if air is not None else None
+    band, fitted = _adjusted(job, scene, band, air, stack, step)
     settings, account = chain_settings(band, job.temperature, weighting, causes, step)
+    settings = replace(settings, noise=settings.noise / _averaging(scene, info.grid, grid))
     column = column_of_job(job.atmosphere, scene)
     emissivity = None
     if air is not None or column is not None:
@@ -143,12 +149,13 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         elevation=air.elevation if air is not None else 0.0,
         view_zenith_angle=scene.view_zenith_angle,
         emissivity=emissivity,
-        air=pack(air.grid) if air is not None else None,
+        air=stack,
         column=column,
         settings=settings,
         formats=_formats(job),
         mask=sum(FLAG[name].mask for name in job.quality.mask),
         references=_references(job, folder),
+        area=area,
         cloud_buffer=job.quality.cloud_buffer,
         pixel=pixel_in_metres(grid),
     )
@@ -159,6 +166,8 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         "sensor": scene.sensor.name,
         **account,
     }
+    if fitted is not None:
+        method["radiance_adjustment"] = fitted
     if emissivity is not None:
         method["emissivity"] = emissivity.describe()
     if air is not None:
@@ -184,6 +193,36 @@ def _chosen_band(job: Job, scene: Scene) -> ThermalBand:
         where="temperature.band",
         remedy=f"Choose from: {', '.join(band.number for band in scene.thermal)}",
     )
+
+
+def _adjusted(
+    job: Job, scene: Scene, band: ThermalBand, air: Air | None, stack: AirStack | None, step: float
+) -> tuple[ThermalBand, dict[str, object] | None]:
+    """The band corrected to the scene's known targets, where it names any."""
+    if not any(target.band == band.number for target in scene.targets):
+        return band, None
+    from groundglow.run.target_fit import adjusted_to_targets  # noqa: PLC0415  (on request)
+
+    plain, _ = chain_settings(band, job.temperature, np.array([300.0]), 0, step)
+    return adjusted_to_targets(
+        scene,
+        band,
+        radiance_conversion(band, job.temperature.radiometry),
+        stack,
+        elevation=air.elevation if air is not None else 0.0,
+        noise=plain.noise,
+    )
+
+
+def _averaging(scene: Scene, source: Grid, target: Grid) -> float:
+    """By what averaging onto a coarser grid reduces the noise: the root of the independent footprints."""
+    height, width = pixel_in_metres(source)
+    size = math.sqrt(height * width)
+    ratio = math.prod(pixel_in_metres(target)) / (height * width)
+    if ratio <= 1.0:
+        return 1.0
+    native = max(scene.sensor.native_footprint or size, size)
+    return math.sqrt(float(independent_footprints(ratio, pixel_size=size, native_footprint=native)))
 
 
 def _quantisation_step(band: ThermalBand, dtype: str, file_scale: float) -> float:

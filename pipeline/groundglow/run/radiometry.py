@@ -3,22 +3,25 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from functools import partial
 
 import numpy as np
+from numpy.typing import ArrayLike, NDArray
 
 from groundglow.errors import ConfigError
 from groundglow.physics.band_table import (
     BandTable,
-    RadianceTable,
     radiance_table,
     table_from_response,
     table_from_two_constants,
 )
 from groundglow.physics.planck import two_constant_radiance
 from groundglow.physics.spectral_response import SpectralResponse
+from groundglow.raster.band import Convert
 from groundglow.retrieval.chain import ChainSettings
 from groundglow.run.config import Temperature
+from groundglow.scene.conversion import radiance_of_pixels
 from groundglow.scene.model import ThermalBand
 
 # Stated where a sensor file is silent; planning values, recorded as assumed.
@@ -47,14 +50,19 @@ def band_table(band: ThermalBand, radiometry: str) -> BandTable:
     return table_from_two_constants(constants.k1, constants.k2)
 
 
-def radiance_conversion(band: ThermalBand, radiometry: str) -> RadianceTable | None:
-    """Temperature to radiance for bands that come in kelvin, so that radiance is what is averaged."""
+def radiance_conversion(band: ThermalBand, radiometry: str) -> Convert | None:
+    """What turns a band's pixels, as read, into radiance, so that radiance is what is averaged."""
     if band.quantity in ("counts", "radiance"):
-        return None
+        return radiance_of_pixels(band, _no_temperature)
+    law: Callable[[ArrayLike], NDArray[np.float64]] = band.sensor_band.response.band_radiance
     if radiometry == "two-constants" and band.two_constants is not None:
-        constants = band.two_constants
-        return radiance_table(partial(two_constant_radiance, k1=constants.k1, k2=constants.k2))
-    return radiance_table(band.sensor_band.response.band_radiance)
+        law = partial(two_constant_radiance, k1=band.two_constants.k1, k2=band.two_constants.k2)
+    return radiance_of_pixels(band, radiance_table(law))
+
+
+def _no_temperature(temperature: NDArray[np.float32]) -> NDArray[np.float32]:
+    """Stands where no temperature is converted."""
+    return temperature
 
 
 def radiance_step(response: SpectralResponse, kelvin: float, at: float) -> float:

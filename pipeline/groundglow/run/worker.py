@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
-from typing import NamedTuple
+from typing import NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,7 +20,7 @@ from groundglow.layers.encode import EncodedBlock, LayerFormat, encode_block
 from groundglow.quantities import FLAG
 from groundglow.raster.band import RasterSource
 from groundglow.raster.grid import TILE, Block, Grid
-from groundglow.raster.source import read_block, read_codes
+from groundglow.raster.source import read_block
 from groundglow.retrieval.chain import (
     ChainSettings,
     EmissivityFields,
@@ -32,7 +32,7 @@ from groundglow.retrieval.chain_cloud import near_cloud
 from groundglow.run.column import ColumnAndGround, ColumnWork
 from groundglow.run.emissivity_source import EmissivitySource
 from groundglow.scene.model import QualityRaster
-from groundglow.scene.quality import flags_of_codes
+from groundglow.scene.quality_read import read_flags
 
 Pixels = NDArray[np.float32]
 Flags = NDArray[np.uint16]
@@ -76,6 +76,8 @@ class SceneWork:
         Flags whose pixels carry no number.
     references : mapping of str to RasterSource
         Known values of layers to compare with.
+    area : PlacedArea or None
+        Pixels outside it carry no number.
     cloud_buffer : float
         Distance from a cloud within which pixels are flagged. [m]
     pixel : tuple of float
@@ -95,6 +97,7 @@ class SceneWork:
     formats: Mapping[str, LayerFormat]
     mask: int
     references: Mapping[str, RasterSource] = field(default_factory=dict)
+    area: PlacedArea | None = None
     cloud_buffer: float = 0.0
     pixel: tuple[float, float] = (1.0, 1.0)
 
@@ -102,6 +105,13 @@ class SceneWork:
     def halo(self) -> tuple[int, int]:
         """Rows and columns around a block whose clouds it must know."""
         return int(self.cloud_buffer / self.pixel[0]), int(self.cloud_buffer / self.pixel[1])
+
+
+class PlacedArea(Protocol):
+    """An area of interest on the grid."""
+
+    def mask(self, block: Block) -> NDArray[np.bool_]:
+        """True where a pixel of the block lies inside."""
 
 
 class ErrorSums(NamedTuple):
@@ -264,7 +274,10 @@ def radiance_and_flags(work: SceneWork, block: Block) -> tuple[Pixels, Flags]:
         flags |= _INTERPOLATED
     if work.quality is not None:
         flags |= _quality_flags(work, work.quality, block)
-    return read.values, flags
+    values = read.values
+    if work.area is not None:
+        values = np.where(work.area.mask(block), values, np.float32(np.nan))
+    return values, flags
 
 
 def _quality_flags(work: SceneWork, quality: QualityRaster, block: Block) -> Flags:
@@ -275,8 +288,7 @@ def _quality_flags(work: SceneWork, quality: QualityRaster, block: Block) -> Fla
     wide = Block(
         block.row - above, block.column - left, block.height + above + below, block.width + left + right
     )
-    words = read_codes(quality.source, work.grid, wide, resampling="majority")
-    flags = np.where(words.valid, flags_of_codes(words.codes, quality.rules), np.uint16(0))
+    flags = read_flags(quality, work.grid, wide)
     if work.cloud_buffer == 0.0:
         return flags
     near = near_cloud((flags & _CLOUD) != 0, (above, below, left, right), work.pixel, work.cloud_buffer)
