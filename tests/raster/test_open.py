@@ -219,3 +219,11 @@ def test_pixels_of_no_size(tmp_path: Path) -> None:
                  type(flat)(flat.crs, Affine(30, 0, 600_000, 30, 0, 5_300_000), 4, 4))  # fmt: skip
     with pytest.raises(InputError, match="has pixels of no size"):
         describe_raster(path)
+
+
+def test_an_address_that_does_not_answer() -> None:
+    with (
+        rasterio.Env(GDAL_HTTP_MAX_RETRY="0"),
+        pytest.raises(InputError, match="cannot be fetched, or is not a raster"),
+    ):
+        open_raster("/vsicurl/http://127.0.0.1:9/b10.tif", indirect=True)

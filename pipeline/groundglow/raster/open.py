@@ -20,6 +20,7 @@ from groundglow.raster.environment import gdal_environment
 from groundglow.raster.grid import Grid
 
 _HANDLES_PER_THREAD = 32
+_NETWORK = ("/vsicurl/", "/vsis3/", "/vsigs/", "/vsiaz/", "http://", "https://", "s3://", "gs://", "az://")
 
 _local = threading.local()
 _warnings_lock = threading.Lock()
@@ -212,6 +213,8 @@ def _check_local_file(path: Path) -> None:
 
 def _why_not_a_raster(path: str, indirect: bool) -> str:
     """The likeliest reason for a failure to open."""
+    if path.startswith(_NETWORK):
+        return "cannot be fetched, or is not a raster"
     if not is_local(path):
         return "cannot be opened as a raster"
     file = Path(path)
@@ -280,7 +283,13 @@ def _read_last_pixel(dataset: DatasetReader, path: str) -> None:
 
 
 def unreadable(path: str, error: Exception) -> InputError:
-    """The error for pixels that cannot be decoded."""
+    """The error for pixels that cannot be had: a damaged file, or an address that does not answer."""
+    if path.startswith(_NETWORK):
+        return InputError(
+            "pixels cannot be fetched, or are damaged",
+            where=path,
+            remedy=f"Check the address, the right to read it, and the network. GDAL says: {_tidy(str(error))}",
+        )
     return InputError(
         "pixels cannot be read: the file is damaged or cut short",
         where=path,
