@@ -111,8 +111,40 @@ def plan(
 
 
 @app.command(epilog=EXIT_CODES)
+def air(
+    job: JobFile,
+    band: Annotated[
+        str | None, typer.Option(help="Number of a thermal band; default: all the scene has.")
+    ] = None,
+    height: Annotated[
+        float | None,
+        typer.Option(min=-500, max=9000, help="Ground above sea level [m]; default: the scene's middle."),
+    ] = None,
+    angle: Annotated[
+        float | None,
+        typer.Option(min=0, max=80, help="View zenith angle at the surface [deg]; default: the scene's."),
+    ] = None,
+    plot: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Draw the profile and its spectra (.png).")
+    ] = None,
+    spectrum: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the spectra as CSV.")] = None,
+    as_json: Json = False,
+) -> None:
+    """Solve the air of a job's first scene at one height and angle, and show it.
+
+    Water, transmittance and radiances of each band, what each gas takes, the sky flux beside two published
+    formulas, and what the stated uncertainties change. No layer is made.
+    """
+    from groundglow.run.air_command import show_air  # noqa: PLC0415  (help must not wait for the libraries)
+
+    show_air(job, band=band, height=height, angle=angle, as_json=as_json, plot=plot, spectrum=spectrum)
+
+
+@app.command(epilog=EXIT_CODES)
 def catalogue(
-    output: Annotated[str, typer.Argument(metavar="OUTPUT", help="Output folder (or s3:// address) of a job.")],
+    output: Annotated[
+        str, typer.Argument(metavar="OUTPUT", help="Output folder (or s3:// address) of a job.")
+    ],
 ) -> None:
     """Make the STAC collection of an output folder anew from the scenes in it.
 
@@ -121,6 +153,27 @@ def catalogue(
     from groundglow.run.commands import rebuild_catalogue  # noqa: PLC0415  (help must not wait for the libraries)
 
     raise typer.Exit(rebuild_catalogue(output))
+
+
+@app.command(epilog=EXIT_CODES)
+def sensors(
+    name: Annotated[
+        str | None, typer.Argument(metavar="SENSOR", help="A shipped sensor, or the path of a sensor file.")
+    ] = None,
+    plot: Annotated[Path | None, typer.Option(metavar="FILE", help="Draw the responses (.png, .svg).")] = None,
+    as_json: Json = False,
+) -> None:
+    """List the sensors there are, or show one in numbers.
+
+    Effective wavelength, the two constants fitted to the spectral response and their error, and how the published
+    constants differ from the integrated response.
+    """
+    from groundglow.run.sensor_command import list_sensors, show_sensor  # noqa: PLC0415  (see above)
+
+    if name is None:
+        list_sensors(as_json=as_json)
+    else:
+        show_sensor(name, as_json=as_json, plot=plot)
 
 
 cli_stages.register(app)
