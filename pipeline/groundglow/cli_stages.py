@@ -236,7 +236,7 @@ def explain(
 
 def job_schema() -> None:
     """Print the JSON Schema of the job file, for editors that check and complete TOML."""
-    from groundglow.run.stage_commands import job_schema as schema  # noqa: PLC0415  (as above)
+    from groundglow.run.job_schema import job_schema as schema  # noqa: PLC0415  (as above)
 
     typer.echo(schema(), nl=False)
 

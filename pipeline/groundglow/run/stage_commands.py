@@ -6,7 +6,6 @@ import json
 from collections.abc import Sequence
 from pathlib import Path
 
-from groundglow.run.config import Job
 from groundglow.run.outcome import describe_grid
 from groundglow.run.stage_record import StageRecord
 from groundglow.run.stage_setting import StageCall
@@ -89,13 +88,3 @@ def layers(call: StageCall, inputs: Sequence[Path], *, quiet: bool, as_json: boo
     elif not quiet:
         print(outcome_table([outcome], outcome.seconds))
     return 0
-
-
-def job_schema() -> str:
-    """The JSON Schema of the job file, for editors that check and complete TOML."""
-    schema = {
-        "$schema": "https://json-schema.org/draft/2020-12/schema",
-        **Job.model_json_schema(),
-        "title": "Groundglow job file",
-    }
-    return json.dumps(schema, indent=2) + "\n"
