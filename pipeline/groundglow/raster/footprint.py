@@ -10,9 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 from rasterio.windows import Window
 
-from groundglow.raster import axes, mesh
+from groundglow.raster import axes, mesh_kernels
 from groundglow.raster.axes import AxisWeights
 from groundglow.raster.grid import Block
+from groundglow.raster.mesh import Mesh, mesh_of_block, mesh_plan
 from groundglow.raster.relation import AlongAxes, Otherwise
 
 Float = NDArray[np.float64]
@@ -21,34 +22,15 @@ Mask = NDArray[np.bool_]
 Pixels = NDArray[np.float32]
 Scalar = TypeVar("Scalar", bound=np.generic)
 
-# The most source pixels, or samples of them, that are held at a time.
-MOST_PIXELS = 1 << 23
+# The most source pixels, and the most samples between grids, that are held at a time.
+MOST_PIXELS = 1 << 22
+MOST_SAMPLES = 1 << 22
 
 _WEIGHTS = {
     "continuous": axes.continuous_weights,
     "majority": axes.class_weights,
     "nearest": axes.nearest_weights,
 }
-
-
-@dataclass(frozen=True)
-class Positions:
-    """Where samples of a block lie in the source.
-
-    Attributes
-    ----------
-    columns, rows : arrays (height * samples, width * samples)
-        Source pixel coordinates, NaN where there is none.
-    row_index, column_index : int arrays, same shape
-        The pixels that hold them.
-    inside : bool array, same shape
-    """
-
-    columns: Float
-    rows: Float
-    row_index: Integers
-    column_index: Integers
-    inside: Mask
 
 
 @dataclass(frozen=True)
@@ -61,21 +43,19 @@ class Footprint:
         In the target grid.
     window : rasterio Window
         What must be read of the source.
-    source_shape : tuple of int
     rows, columns : AxisWeights
-        Over source pixels, or over samples where there are positions.
-    positions : Positions or None
+        Over source pixels, or over samples where there is a mesh.
+    mesh : Mesh or None
         Where the axes of the two grids are not parallel.
     linear : bool
-        Interpolate at the positions rather than take the pixels that hold them.
+        Interpolate at the samples rather than take the pixels that hold them.
     """
 
     piece: Block
     window: Window
-    source_shape: tuple[int, int]
     rows: AxisWeights
     columns: AxisWeights
-    positions: Positions | None = None
+    mesh: Mesh | None = None
     linear: bool = False
 
     def mean(self, values: Pixels) -> tuple[Pixels, Mask]:
@@ -83,13 +63,13 @@ class Footprint:
         shape = (self.piece.height, self.piece.width)
         result, mixed = np.empty(shape, dtype=np.float32), np.empty(shape, dtype=np.bool_)
         top, left = self.window.row_off, self.window.col_off
-        if self.positions is not None and self.linear:
-            at = self.positions
-            mesh.interpolate(
-                values, top, left, *self.source_shape, at.columns, at.rows, axes.LEAST_SHARE, result, mixed
+        if self.mesh is not None and self.linear:
+            at = self.mesh
+            mesh_kernels.interpolate(
+                values, top, left, at.nodes, at.places, at.turn, axes.LEAST_SHARE, result, mixed
             )
             return result, mixed
-        if self.positions is not None:
+        if self.mesh is not None:
             values = self._gather(values, np.float32(np.nan))
             top = left = 0
         axes.weighted_mean(
@@ -106,10 +86,10 @@ class Footprint:
 
     def any(self, marked: Mask) -> Mask:
         """Whether any source pixel of a target pixel is marked."""
-        if self.positions is not None and self.linear:
+        if self.mesh is not None and self.linear:
             return np.asarray(self.mean(marked.astype(np.float32))[0] > 0.0)
         top, left = self.window.row_off, self.window.col_off
-        if self.positions is not None:
+        if self.mesh is not None:
             marked = self._gather(marked, np.False_)
             top = left = 0
         found = np.empty((self.piece.height, self.piece.width), dtype=np.bool_)
@@ -122,7 +102,7 @@ class Footprint:
     def majority(self, codes: Integers, valid: Mask) -> tuple[Integers, Mask, Mask]:
         """The code that covers most of each pixel, whether there is one, and whether several meet."""
         top, left = self.window.row_off, self.window.col_off
-        if self.positions is not None:
+        if self.mesh is not None:
             codes, valid = self._gather(codes, np.int64(0)), self._gather(valid, np.False_)
             top = left = 0
         shape = (self.piece.height, self.piece.width)
@@ -136,13 +116,16 @@ class Footprint:
 
     def _gather(self, pixels: NDArray[Scalar], outside: Scalar) -> NDArray[Scalar]:
         """The pixels that hold the samples."""
-        at = self.positions
+        at = self.mesh
         if at is None:
-            raise AssertionError("only a footprint with positions gathers")
+            raise AssertionError("only a footprint with a mesh gathers")
+        samples = int(at.places[mesh_kernels.SAMPLES])
+        result = np.empty((self.piece.height * samples, self.piece.width * samples), dtype=pixels.dtype)
         top, left = self.window.row_off, self.window.col_off
-        rows = np.where(at.inside, at.row_index - top, 0)
-        columns = np.where(at.inside, at.column_index - left, 0)
-        return np.where(at.inside, pixels[rows, columns], outside)
+        mesh_kernels.gather(
+            np.ascontiguousarray(pixels), top, left, at.nodes, at.places, at.turn, outside, result
+        )
+        return result
 
 
 def footprints(related: AlongAxes | Otherwise, block: Block, purpose: str) -> Iterator[Footprint]:
@@ -163,7 +146,7 @@ def footprints(related: AlongAxes | Otherwise, block: Block, purpose: str) -> It
         None for pieces that lie outside the source.
     """
     samples = _samples(related, purpose)
-    if block.height * block.width * samples**2 > MOST_PIXELS and block.height * block.width > 1:
+    if block.height * block.width * samples**2 > MOST_SAMPLES and block.height * block.width > 1:
         for half in _halves(block):
             yield from footprints(related, half, purpose)
         return
@@ -185,7 +168,7 @@ def _samples(related: AlongAxes | Otherwise, purpose: str) -> int:
     """Samples along each side of a target pixel."""
     if isinstance(related, AlongAxes) or purpose == "nearest":
         return 1
-    return mesh.mesh_plan(related).samples
+    return mesh_plan(related).samples
 
 
 def _halves(block: Block) -> tuple[Block, Block]:
@@ -212,44 +195,27 @@ def _along_axes(related: AlongAxes, block: Block, purpose: str) -> Footprint | N
     if bottom <= top or right <= left:
         return None
     window = Window(left, top, right - left, bottom - top)
-    return Footprint(block, window, (related.rows.size, related.columns.size), rows, columns)
+    return Footprint(block, window, rows, columns)
 
 
 def _by_position(related: Otherwise, block: Block, purpose: str, samples: int) -> Footprint | None:
     """Footprint between any other grids."""
-    plan = mesh.mesh_plan(related)
-    height, width = related.source.shape
-    first_row, first_column, node_columns, node_rows = mesh.node_positions(related, block, plan)
-    columns = np.empty((block.height * samples, block.width * samples))
-    rows = np.empty_like(columns)
-    mesh.sample_positions(
-        node_columns, node_rows, first_row, first_column, plan.step, block.row, block.column, samples,
-        plan.period, 0.5 * width, columns, rows,
-    )  # fmt: skip
-    at = Positions(
-        columns,
-        rows,
-        np.empty(columns.shape, dtype=np.int64),
-        np.empty(columns.shape, dtype=np.int64),
-        np.empty(columns.shape, dtype=np.bool_),
+    mesh = mesh_of_block(related, block, samples)
+    found = np.empty(4, dtype=np.int64)
+    mesh_kernels.extent(
+        mesh.nodes, mesh.places, mesh.turn, block.height * samples, block.width * samples, found
     )
-    mesh.nearest_index(height, width, columns, rows, at.row_index, at.column_index, at.inside)
-    if not at.inside.any():
+    top, bottom, left, right = (int(index) for index in found)
+    if bottom < top:
         return None
+    height, width = related.source.shape
     linear = purpose == "continuous" and samples == 1
     reach = 1 if linear else 0
-    used_rows, used_columns = at.row_index[at.inside], at.column_index[at.inside]
-    top, bottom = max(int(used_rows.min()) - reach, 0), min(int(used_rows.max()) + 1 + reach, height)
-    left, right = max(int(used_columns.min()) - reach, 0), min(int(used_columns.max()) + 1 + reach, width)
-    return Footprint(
-        block,
-        Window(left, top, right - left, bottom - top),
-        (height, width),
-        _cells(block.height, samples),
-        _cells(block.width, samples),
-        at,
-        linear,
-    )
+    top, bottom = max(top - reach, 0), min(bottom + 1 + reach, height)
+    left, right = max(left - reach, 0), min(right + 1 + reach, width)
+    window = Window(left, top, right - left, bottom - top)
+    rows, columns = _cells(block.height, samples), _cells(block.width, samples)
+    return Footprint(block, window, rows, columns, mesh, linear)
 
 
 def _cells(number: int, samples: int) -> AxisWeights:

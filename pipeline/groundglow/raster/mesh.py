@@ -1,4 +1,4 @@
-"""Source positions of target pixels between reference systems, and sampling at them.
+"""Source positions of target pixels between reference systems.
 
 Positions are exact at the nodes of a mesh that is fixed to the target grid (not to the block) and
 interpolated between them; the mesh is made so fine that the interpolation errs by less than a
@@ -16,7 +16,6 @@ from rasterio.errors import CRSError, RasterioError
 from rasterio.warp import transform as transform_points
 
 from groundglow.errors import InputError
-from groundglow.kernels import kernel
 from groundglow.raster.environment import gdal_environment
 from groundglow.raster.grid import Block, apply
 from groundglow.raster.relation import Otherwise, longitude_period
@@ -55,7 +54,7 @@ def mesh_plan(between: Otherwise) -> MeshPlan:
     period = longitude_period(between.source) or 0.0
     step = next((step for step in _STEPS if _mesh_error(between, step, period) < _POSITION_ERROR), 1)
     ratio = _size_ratio(between, period)
-    samples = 1 if ratio <= 1.25 else int(min(_MOST_SAMPLES, max(4, np.ceil(2.0 * ratio))))
+    samples = 1 if ratio <= 1.25 else int(min(_MOST_SAMPLES, max(4, np.ceil(1.5 * ratio))))
     return MeshPlan(step, samples, period)
 
 
@@ -85,24 +84,48 @@ def source_positions(between: Otherwise, columns: Float, rows: Float) -> tuple[F
     return found_columns.reshape(columns.shape), found_rows.reshape(rows.shape)
 
 
-def node_positions(between: Otherwise, block: Block, plan: MeshPlan) -> tuple[int, int, Float, Float]:
-    """Positions at the mesh's nodes around a block.
+@dataclass(frozen=True)
+class Mesh:
+    """The mesh around one block, as the kernels take it.
 
-    Returns
-    -------
-    first_row, first_column : int
-        Number of the first node along each axis.
-    columns, rows : arrays (nodes down, nodes across)
+    Attributes
+    ----------
+    nodes : array (2, nodes down, nodes across)
+        Source column and row at the nodes.
+    places : int array
+        In the order of the constants in :mod:`groundglow.raster.mesh_kernels`.
+    turn : array (2,)
+        Source columns in a turn of longitude (0 where there is none), and the middle of the source.
     """
-    step = plan.step
+
+    nodes: Float
+    places: Integers
+    turn: Float
+
+
+def mesh_of_block(between: Otherwise, block: Block, samples: int) -> Mesh:
+    """The mesh around a block.
+
+    Parameters
+    ----------
+    between : Otherwise
+        The two grids.
+    block : Block
+        Of the target grid.
+    samples : int
+        Points along each side of a target pixel.
+    """
+    plan = mesh_plan(between)
+    step, (height, width) = plan.step, between.source.shape
     first_row, last_row = block.row // step, -(-(block.row + block.height) // step)
     first_column, last_column = block.column // step, -(-(block.column + block.width) // step)
     node_rows = np.arange(first_row, last_row + 1, dtype=np.float64) * step
     node_columns = np.arange(first_column, last_column + 1, dtype=np.float64) * step
-    columns, rows = source_positions(
+    positions = source_positions(
         between, *np.broadcast_arrays(node_columns[np.newaxis, :], node_rows[:, np.newaxis])
     )
-    return first_row, first_column, np.ascontiguousarray(columns), np.ascontiguousarray(rows)
+    places = [first_row, first_column, step, block.row, block.column, samples, height, width]
+    return Mesh(np.stack(positions), np.array(places, dtype=np.int64), np.array([plan.period, 0.5 * width]))
 
 
 def _test_points(between: Otherwise) -> tuple[Float, Float]:
@@ -143,125 +166,3 @@ def _size_ratio(between: Otherwise, period: float) -> float:
 def _unwrap(difference: Float, period: float) -> Float:
     """A difference of columns by the short way round."""
     return difference - period * np.round(difference / period) if period else difference
-
-
-@kernel(
-    "void(float64[:, ::1], float64[:, ::1], int64, int64, int64, int64, int64, int64, float64, float64,"
-    " float64[:, ::1], float64[:, ::1])"
-)
-def sample_positions(
-    node_columns: Float,
-    node_rows: Float,
-    first_node_row: int,
-    first_node_column: int,
-    step: int,
-    first_row: int,
-    first_column: int,
-    samples: int,
-    period: float,
-    middle: float,
-    columns: Float,
-    rows: Float,
-) -> None:
-    """Source positions of ``samples`` x ``samples`` points within each target pixel of a block.
-
-    With a period, columns come back within half a turn of ``middle``.
-    """
-    for i in range(rows.shape[0]):
-        v = ((first_row * samples + i + 0.5) / samples) / step
-        p = int(v)
-        fv = v - p
-        p -= first_node_row
-        for j in range(rows.shape[1]):
-            u = ((first_column * samples + j + 0.5) / samples) / step
-            q = int(u)
-            fu = u - q
-            q -= first_node_column
-            a = node_columns[p, q]
-            b = node_columns[p, q + 1]
-            c = node_columns[p + 1, q]
-            d = node_columns[p + 1, q + 1]
-            if period > 0.0:
-                b -= period * np.rint((b - a) / period)
-                c -= period * np.rint((c - a) / period)
-                d -= period * np.rint((d - a) / period)
-            column = (1.0 - fv) * ((1.0 - fu) * a + fu * b) + fv * ((1.0 - fu) * c + fu * d)
-            if period > 0.0:
-                column -= period * np.rint((column - middle) / period)
-            columns[i, j] = column
-            rows[i, j] = (1.0 - fv) * ((1.0 - fu) * node_rows[p, q] + fu * node_rows[p, q + 1]) + fv * (
-                (1.0 - fu) * node_rows[p + 1, q] + fu * node_rows[p + 1, q + 1]
-            )
-
-
-@kernel(
-    "void(float32[:, ::1], int64, int64, int64, int64, float64[:, ::1], float64[:, ::1], float64,"
-    " float32[:, ::1], boolean[:, ::1])"
-)
-def interpolate(
-    values: NDArray[np.float32],
-    row_origin: int,
-    column_origin: int,
-    height: int,
-    width: int,
-    columns: Float,
-    rows: Float,
-    least_share: float,
-    result: NDArray[np.float32],
-    mixed: NDArray[np.bool_],
-) -> None:
-    """Bilinear value at each position, of the neighbours that have one; NaN where too few have."""
-    for i in range(result.shape[0]):
-        for j in range(result.shape[1]):
-            result[i, j] = np.nan
-            mixed[i, j] = False
-            x = columns[i, j]
-            y = rows[i, j]
-            if not (x >= 0.0 and x <= width and y >= 0.0 and y <= height):
-                continue
-            x = min(max(x - 0.5, 0.0), width - 1.0)
-            y = min(max(y - 0.5, 0.0), height - 1.0)
-            left = min(int(x), max(width - 2, 0))
-            top = min(int(y), max(height - 2, 0))
-            fx = x - left
-            fy = y - top
-            weights = 0.0
-            total = 0.0
-            for k in range(2):
-                wy = fy if k == 1 else 1.0 - fy
-                for m in range(2):
-                    weight = wy * (fx if m == 1 else 1.0 - fx)
-                    if weight == 0.0:
-                        continue
-                    value = values[top + k - row_origin, left + m - column_origin]
-                    if not np.isnan(value):
-                        weights += weight
-                        total += weight * value
-            if weights > 0.0 and weights >= least_share * (1.0 - 1e-9):
-                result[i, j] = total / weights
-                mixed[i, j] = weights < 1.0 - 1e-9
-
-
-@kernel("void(int64, int64, float64[:, ::1], float64[:, ::1], int64[:, ::1], int64[:, ::1], boolean[:, ::1])")
-def nearest_index(
-    height: int,
-    width: int,
-    columns: Float,
-    rows: Float,
-    row_index: Integers,
-    column_index: Integers,
-    inside: NDArray[np.bool_],
-) -> None:
-    """The source pixel that holds each position; index 0 and False where none does."""
-    for i in range(inside.shape[0]):
-        for j in range(inside.shape[1]):
-            x = columns[i, j]
-            y = rows[i, j]
-            if x >= 0.0 and x <= width and y >= 0.0 and y <= height:
-                inside[i, j] = True
-                column_index[i, j] = min(int(x), width - 1)
-                row_index[i, j] = min(int(y), height - 1)
-            else:
-                inside[i, j] = False
-                column_index[i, j] = 0
-                row_index[i, j] = 0

@@ -55,7 +55,9 @@ class SceneFiles:
         """
         if PurePosixPath(name).name != name or "\\" in name or name in ("", ".", ".."):
             raise InputError(f"names a file {name!r} that is not beside it", where=f"{self.root}, {beside}")
-        return self.names.get(str(PurePosixPath(beside).parent / name).lower())
+        wanted = str(PurePosixPath(beside).parent / name)
+        exact = wanted if wanted in self.names.values() else None
+        return exact or self.names.get(wanted.lower())
 
     def raster_path(self, inner: str) -> str:
         """The path by which GDAL opens a file."""
