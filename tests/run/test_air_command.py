@@ -42,6 +42,8 @@ def scene(tmp_path_factory: pytest.TempPathFactory) -> InventedScene:
     longitude, latitude = np.arange(12.0, 16.0, 0.5), np.arange(47.0, 50.0, 0.5)
     content = analysis_files.dataset(longitude=longitude, latitude=latitude)
     analysis_files.written(painted.folder / "day.nc", content)
+    analysis_files.written(painted.folder / "elsewhere.nc", analysis_files.dataset())
+    analysis_files.written(painted.folder / "later.nc", content.isel(time=slice(1, None)))
     return painted
 
 
@@ -115,6 +117,12 @@ def test_height_and_angle_asked_for(scene: InventedScene) -> None:
     transmittance = [found["bands"]["1"]["transmittance"] for found in (slant, low, high)]
     assert transmittance == sorted(transmittance)
     assert slant["view_zenith_angle"] == 50.0
+
+
+def test_a_profile_that_begins_above_the_ground_is_extended_a_little(scene: InventedScene) -> None:
+    found = record(scene, FROM_SOUNDING, "--height", 100)
+    # 300 m further down at 6.5 K km-1.
+    assert found["near_ground"]["temperature"] == pytest.approx(298.15 + 1.95, abs=0.01)
 
 
 def test_an_airborne_sensor_sees_less_air(scene: InventedScene) -> None:
@@ -194,6 +202,8 @@ def test_pictures_need_matplotlib(
         (FROM_SOUNDING.replace("flight", "nowhere"), (), 3, "there is no such file"),
         (FROM_SOUNDING, ("--spectrum", "/nowhere/at/all.csv"), 3, "cannot be written"),
         (ANALYSIS.replace("day", "nowhere"), (), 3, "there is no such file"),
+        (ANALYSIS.replace("day", "elsewhere"), (), 3, "it covers 45.50 N to 47.00 N, 7.00 E to 9.00 E"),
+        (ANALYSIS.replace("day", "later"), (), 3, "does not cover 2026-07-14 08:32 UTC"),
         (
             FROM_SOUNDING + 'sensor_above = "sea"\nsensor_height = 300.0\n', (), 3,
             "not above the ground",

@@ -6,6 +6,7 @@ file is opened.
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Iterator, Sequence
 from contextlib import ExitStack, contextmanager
 from importlib import import_module
@@ -85,10 +86,7 @@ def first_line(error: Exception) -> str:
 
 def _opened(path: Path, engine: str, stack: ExitStack) -> list[xr.Dataset]:
     if engine == "cfgrib":
-        import cfgrib  # noqa: PLC0415  (an extra, and slow to import)
-
-        # No index files are left beside the user's data.
-        return list(cfgrib.open_datasets(str(path), backend_kwargs={"indexpath": ""}))
+        return _opened_grib(path)
     import xarray as xr  # noqa: PLC0415  (slow to import, and needed for analyses only)
 
     if engine == "scipy":
@@ -98,3 +96,17 @@ def _opened(path: Path, engine: str, stack: ExitStack) -> list[xr.Dataset]:
             xr.open_dataset(stream, engine=engine, mmap=path.stat().st_size > _MAPPED, decode_timedelta=False)
         ]
     return [xr.open_dataset(path, engine=engine, decode_timedelta=False)]
+
+
+def _opened_grib(path: Path) -> list[xr.Dataset]:
+    import cfgrib  # noqa: PLC0415  (an extra, and slow to import)
+
+    damaged = import_module("eccodes").CodesInternalError
+    # No index files are left beside the user's data, and damaged messages are not passed over.
+    options = {"indexpath": "", "errors": "raise"}
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", FutureWarning)  # of the reader, about what it asks of xarray
+        try:
+            return list(cfgrib.open_datasets(str(path), backend_kwargs=options))
+        except damaged as error:
+            raise OSError(first_line(error)) from error
