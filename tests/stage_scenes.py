@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import numpy as np
+
 from command_line import Finished, groundglow
 from invented_scene import InventedScene, paint_scene, scene_text, write_raster
 
@@ -64,12 +65,11 @@ def work(scene: InventedScene) -> Path:
     return scene.folder / "work"
 
 
-def stage_by_stage(scene: InventedScene, job: Path | None = None) -> Path:
-    """All stage commands, one after the other; the folder of the finished layers."""
+def stage_by_stage(scene: InventedScene, job: Path | None = None, *, air: bool = True) -> Path:
+    """All stage commands, one after the other (without air: for the water-vapour method); the finished folder."""
     at = work(scene)
-    surface = [
-        f"--{name}={at / name}" for name in ("radiance", "brightness-temperature", "emissivity", "atmosphere")
-    ]
+    names = ("radiance", "brightness-temperature", "emissivity", *(("atmosphere",) if air else ()))
+    surface = [f"--{name}={at / name}" for name in names]
     fluxes = [f"--{name}={at / name}" for name in ("surface-temperature", "emissivity")]
     folders = [at / name for name in ("brightness-temperature", "emissivity", "surface-temperature", "flux")]
     for command, given in {
@@ -81,6 +81,8 @@ def stage_by_stage(scene: InventedScene, job: Path | None = None) -> Path:
         "flux": fluxes,
         "layers": folders,
     }.items():
+        if not air and command == "atmosphere":
+            continue
         finished = stage(scene, command, command, *given, "--quiet", job=job)
         assert (finished.code, finished.err) == (0, ""), f"{command}: {finished.err}"
     return at / "layers"

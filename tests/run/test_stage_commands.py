@@ -12,6 +12,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 import rasterio
+
 from command_line import groundglow
 from invented_scene import InventedScene, paint_scene
 from stage_scenes import stage, stage_by_stage, varied_scene, work
@@ -104,6 +105,29 @@ def test_a_failed_stage_leaves_the_old_output_as_it_was(scene: InventedScene, tm
     assert failed.code == 3
     assert checksums(work(scene) / "radiance", "*") == before
     assert [path.name for path in work(scene).iterdir() if path.name.startswith(".")] == []
+
+
+def test_a_stage_that_is_ended_leaves_nothing_behind(tmp_path: Path) -> None:
+    # Workflow managers end a job with SIGTERM; here it comes while the output is being built.
+    program = (
+        "import sys, time; from pathlib import Path; from groundglow.cli import main; "
+        "from groundglow.run import stage_atmosphere as stage; whole = stage.write_whole\n"
+        "def slowly(path, data):\n    whole(path, data); print('half', flush=True); time.sleep(60)\n"
+        "stage.write_whole = slowly\nmain()"
+    )
+    scene = paint_scene(tmp_path)
+    output = work(scene) / "air"
+    arguments = ["atmosphere", scene.job_file, "--scene", scene.scene_file, "--output", output]
+    running = subprocess.Popen(
+        [sys.executable, "-c", program, *map(str, arguments)], stdout=subprocess.PIPE, stderr=subprocess.PIPE
+    )
+    assert running.stdout is not None
+    assert running.stdout.readline() == b"half\n"
+    assert len(list(work(scene).iterdir())) == 2  # the hidden folder and its lock
+    running.terminate()
+    running.communicate(timeout=30)
+    assert running.returncode == 130
+    assert list(work(scene).iterdir()) == []
 
 
 def test_two_processes_do_not_make_the_same_output(scene: InventedScene) -> None:

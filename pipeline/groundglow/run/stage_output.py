@@ -25,6 +25,7 @@ from groundglow.layers.tags import LayerText, text_of
 from groundglow.quantities import QUANTITIES
 from groundglow.raster.environment import gdal_environment
 from groundglow.raster.grid import Block, Grid
+from groundglow.run.interrupt import terminable
 from groundglow.run.publish import building_folder, discard, publish
 from groundglow.run.scheduler import Threads
 from groundglow.run.stage_record import RECORD, StageFile, StageRecord
@@ -136,7 +137,7 @@ def stage_folder(output: Path) -> Iterator[Path]:
         raise OutputError("this is a file, and a folder is to be written", where=str(output))
     with output_errors(output):
         parent.mkdir(parents=True, exist_ok=True)
-    with _sole_writer(parent / f".{name}.lock", output):
+    with terminable(), _sole_writer(parent / f".{name}.lock", output):
         folder = building_folder(parent, name)
         try:
             yield folder

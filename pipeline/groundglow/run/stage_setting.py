@@ -19,6 +19,10 @@ from groundglow.run.stage_record import StageFolder, StageName, agree, read_stag
 from groundglow.scene.model import Scene
 from groundglow.scene.open import open_scene
 
+_WITHOUT_STAGE = {
+    "none": "the job wants no air",
+    "column": "the water-vapour method looks at the column alone",
+}
 _BLACK = ConstantEmissivity(source="constant", value=1.0)
 
 
@@ -98,11 +102,11 @@ class Setting:
         ConfigError
             If the job wants none.
         """
-        if self.job.atmosphere.source == "none":
+        if self.job.atmosphere.source in _WITHOUT_STAGE:
             raise ConfigError(
-                'the job wants no air (source = "none"), so that there is no atmosphere to make',
+                f"{_WITHOUT_STAGE[self.job.atmosphere.source]}, so that there is no atmosphere to make",
                 where=f"{self.call.job}: atmosphere",
-                remedy="Leave this stage out, or name an atmosphere",
+                remedy="Leave this stage out",
             )
         return self._planned(self.job.model_copy(update={"emissivity": _BLACK}))
 
