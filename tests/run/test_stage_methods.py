@@ -84,7 +84,8 @@ def scene(request: pytest.FixtureRequest, tmp_path_factory: pytest.TempPathFacto
 def test_stages_give_the_bytes_of_the_fused_run(scene: InventedScene) -> None:
     fused = checksums(scene.folder / "maps" / "invented")
     assert len(fused) == 8
-    assert checksums(stage_by_stage(scene)) == fused
+    with_air = 'source = "column"' not in scene.job_file.read_text()
+    assert checksums(stage_by_stage(scene, air=with_air)) == fused
 
 
 def test_datasets_give_the_bytes_of_the_fused_run(scene: InventedScene) -> None:
@@ -118,6 +119,8 @@ def test_the_column_method_needs_no_air_and_the_other_does(tmp_path: Path) -> No
     refused = groundglow("surface-temperature", scene.job_file, *given, *target)
     assert (refused.code, "needs the air" in refused.err) == (2, True)
     column = scene.write_job(LAYERS, name="column.toml", air=COLUMN)
+    none = groundglow("atmosphere", column, *target)
+    assert (none.code, "looks at the column alone" in none.err) == (2, True)
     assert groundglow("surface-temperature", column, *given, *target, "--quiet").code == 0
     with rasterio.open(work(scene) / "surface" / "surface_temperature.tif") as raster:
         assert np.isfinite(raster.read(1)).mean() > 0.9
