@@ -12,6 +12,7 @@ import pytest
 import rasterio
 from affine import Affine
 from rasterio.control import GroundControlPoint
+from rasterio.rpc import RPC
 
 from groundglow.errors import InputError
 from groundglow.raster.environment import CACHE_MEGABYTES, gdal_environment
@@ -104,6 +105,21 @@ def test_ground_control_points_only(tmp_path: Path) -> None:
                        gcps=points, crs=UTM) as dataset:  # fmt: skip
         dataset.write(np.ones((1, 4, 4), dtype=np.uint8))
     with pytest.raises(InputError, match=r"placed by 4 ground control points.*gdalwarp -tps .* EPSG:32632"):
+        describe_raster(str(path))
+
+
+@pytest.mark.filterwarnings("ignore:Dataset has no geotransform")
+def test_a_camera_model_only(tmp_path: Path) -> None:
+    path = tmp_path / "model.tif"
+    terms = [1.0] + [0.0] * 19
+    model = RPC(height_off=0.0, height_scale=500.0, lat_off=47.8, lat_scale=0.1, line_den_coeff=terms,
+                line_num_coeff=terms, line_off=2.0, line_scale=2.0, long_off=10.3, long_scale=0.1,
+                samp_den_coeff=terms, samp_num_coeff=terms, samp_off=2.0, samp_scale=2.0)  # fmt: skip
+    with rasterio.open(
+        path, "w", driver="GTiff", width=4, height=4, count=1, dtype="uint8", rpcs=model
+    ) as dataset:
+        dataset.write(np.ones((1, 4, 4), dtype=np.uint8))
+    with pytest.raises(InputError, match=r"placed by a camera model \(RPC\).*gdalwarp -rpc"):
         describe_raster(str(path))
 
 

@@ -257,6 +257,12 @@ def _grid(dataset: DatasetReader, path: str) -> Grid:
             where=path,
             remedy=f"Rectify it first, for example: gdalwarp -tps -r near -t_srs {target} INPUT OUTPUT",
         )
+    if transform.is_identity and dataset.rpcs is not None:
+        raise InputError(
+            "is placed by a camera model (RPC), not by a grid",
+            where=path,
+            remedy="Orthorectify it first, for example: gdalwarp -rpc -to RPC_DEM=elevation.tif INPUT OUTPUT",
+        )
     if transform.is_identity:
         raise InputError(
             "has no position (no affine transform)", where=path, remedy="Georeference the raster first"

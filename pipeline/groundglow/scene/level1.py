@@ -12,9 +12,9 @@ from groundglow.scene.geometry import zenith_at_surface
 from groundglow.scene.level1_groups import Metadata, read_groups
 from groundglow.scene.model import QualityRaster, Reflectance, Scene, ThermalBand
 from groundglow.scene.radiometer import Sensor, TwoConstants
-from groundglow.scene.scene_document import checked_time
 from groundglow.scene.scene_grid import check_on_grid, level1_grid
 from groundglow.scene.sensor import load_sensor
+from groundglow.scene.times import checked_time
 
 _SENSORS = {f"LANDSAT_{number}": f"landsat-{number}" for number in (4, 5, 7, 8, 9)}
 

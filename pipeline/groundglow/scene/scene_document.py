@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from datetime import UTC, datetime
+from datetime import datetime
 from typing import Annotated, Literal
 
 from pydantic import Discriminator, Field, Tag, field_validator, model_validator
@@ -10,33 +10,13 @@ from pydantic import Discriminator, Field, Tag, field_validator, model_validator
 from groundglow.documents import Document
 from groundglow.scene.rule_document import RuleDocument
 from groundglow.scene.sensor_document import TwoConstantsDocument
-
-EARLIEST = datetime(1960, 1, 1, tzinfo=UTC)
-LATEST = datetime(2100, 1, 1, tzinfo=UTC)
+from groundglow.scene.times import checked_time
 
 Angle = Annotated[float, Field(ge=0.0, le=85.0)]
 SunElevation = Annotated[float, Field(ge=-90.0, le=90.0)]
 Height = Annotated[float, Field(ge=-500.0, le=9000.0)]
 Column = Annotated[float, Field(ge=0.0, le=100.0)]
 Kelvin = Annotated[float, Field(ge=150.0, le=1500.0)]
-
-
-def checked_time(value: object) -> datetime:
-    """A time that says its offset from UTC and lies within the age of thermal imaging.
-
-    Raises
-    ------
-    ValueError
-        Saying what is needed.
-    """
-    example = "for example 2026-07-14T10:32:00+02:00"
-    if not isinstance(value, datetime):
-        raise ValueError(f"must be a date and time, {example}, found {value!s}")
-    if value.tzinfo is None:
-        raise ValueError(f"needs its offset from UTC, {example}, found {value.isoformat()}")
-    if not EARLIEST <= value < LATEST:
-        raise ValueError(f"must lie between {EARLIEST.year} and {LATEST.year}, found {value.isoformat()}")
-    return value
 
 
 class RasterDocument(Document):
@@ -199,7 +179,8 @@ class AcquisitionDocument(Document):
     """When, with what, and how it was looked at."""
 
     name: str = Field(
-        pattern=r"^\w[\w.-]{0,199}$",
+        pattern=r"^\w[\w.-]*$",
+        max_length=200,
         description="Identifier, and name of the output folder: letters, digits, underscore, point, hyphen.",
     )
     acquired: datetime = Field(description="Date and time with offset from UTC.")

@@ -13,13 +13,13 @@ from groundglow.scene.geometry import zenith_at_surface
 from groundglow.scene.model import QualityRaster, Reflectance, Scene, ThermalBand
 from groundglow.scene.quality import QualityRule
 from groundglow.scene.radiometer import Sensor
-from groundglow.scene.scene_document import checked_time
 from groundglow.scene.scene_grid import check_on_grid, projected_grid
 from groundglow.scene.sensor import load_sensor, sensor_names
 from groundglow.scene.stac_assets import AssetBand, asset_bands
 from groundglow.scene.stac_fetch import asset_path
 from groundglow.scene.stac_quality import rules_of_classification
 from groundglow.scene.stac_thermal import RADIANCE_UNITS, thermal_bands
+from groundglow.scene.times import checked_time
 
 _NEAR_INFRARED = ("nir08", "nir")
 
