@@ -167,7 +167,7 @@ def test_points_of_a_file_may_be_in_degrees(scene: InventedScene, tmp_path: Path
 def test_the_table_reads_from_the_counts_to_the_map(scene: InventedScene) -> None:
     text = explain(scene, *centre(45, 65)).out
     places = [text.index(word) for word in ("counts", "brightness temperature", "transmittance", "net longwave flux",
-              "emissivity from: source: raster", "air from: source: explicit", "1 sigma from", "flags: cloud",
+              "emissivity from\n  source: raster", "air from\n  source: explicit", "1 sigma from", "flags: cloud",
               "no number in the map, because of: cloud", "layer of the map")]  # fmt: skip
     assert places == sorted(places)
 

@@ -10,6 +10,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+
 from command_line import groundglow
 from invented_scene import InventedScene, paint_scene, write_raster
 from stage_scenes import stage, stage_by_stage, varied_scene, work

@@ -78,7 +78,7 @@ def story_text(story: Story) -> str:
     parts = [f"{story.scene}: {place}", aligned(rows)]
     for title, origin in (("emissivity", story.emissivity_origin), ("air", story.atmosphere_origin)):
         if origin:
-            parts.append(f"{title} from: {_origin(origin)}")
+            parts.append(f"{title} from\n{_origin(origin)}")
     if story.temperature_uncertainty:
         parts.append(aligned(_uncertainty_rows(story)))
     parts.append(f"flags: {', '.join(story.flags) or 'none'}")
@@ -121,7 +121,8 @@ def _uncertainty_rows(story: Story) -> list[list[str]]:
 
 
 def _origin(origin: Mapping[str, Any]) -> str:
-    return "; ".join(f"{_words(key)}: {_flat(value)}" for key, value in origin.items())
+    told = {key: _flat(value) for key, value in origin.items() if value not in (None, "", [], {})}
+    return "\n".join(f"  {_words(key)}: {value}" for key, value in told.items())
 
 
 def _flat(value: Any) -> str:

@@ -1,7 +1,8 @@
 """What a stage's output folder says about itself: ``stage.json``, written last, and its checks.
 
 A stage command leaves one folder: one GeoTIFF a variable (or ``air.json``) and the record. The record
-holds no clock time, host or absolute path, so that the same inputs give the same bytes.
+holds no clock time and no host, and paths as they were named, so that the same command on the same inputs
+gives the same bytes.
 """
 
 from __future__ import annotations
