@@ -33,6 +33,8 @@ class Runner(Protocol):
     workers: int
     # Scenes under way at once.
     at_once: int
+    # Whether a worker that dies leaves what it built.
+    may_leave: bool
 
     def make(self, request: SceneRequest, progress: Progress) -> SceneReply:
         """Make one scene; called from several threads."""
@@ -58,6 +60,7 @@ class LocalRunner:
         self.workers = self._threads.workers
         # While one scene's last blocks are made, the next one is planned and its inputs are read.
         self.at_once = min(2, self.workers)
+        self.may_leave = False
 
     def make(self, request: SceneRequest, progress: Progress) -> SceneReply:
         """See :class:`Runner`."""
@@ -185,6 +188,8 @@ class Batch:
                 for attempt, request in under_way.values():
                     self._log.tell("stopped", scene=attempt.entry.label, address=attempt.entry.address)
                     self._settings.place.discard(None, request.token)
+                if self._runner.may_leave:
+                    self._settings.place.recover()
                 self._catalogue.write(always=True)
 
     def _next(self, fresh: Iterator[SceneEntry], busy: bool) -> _Attempt | None:
@@ -240,7 +245,7 @@ class Batch:
             return
         outcome = self._owned(outcome)
         if reply.built:
-            outcome = self._put(outcome, request)
+            outcome = self._put(outcome, reply.built)
         self.all_usage &= outcome.status != "failed" or reply.usage
         if reply.seen is not None and outcome.status not in ("failed", "left out"):
             self._memory.keep(
@@ -260,13 +265,13 @@ class Batch:
             reason=f"its name {outcome.name!r} is that of another scene of this job ({owner})",
         )  # fmt: skip
 
-    def _put(self, outcome: SceneOutcome, request: SceneRequest) -> SceneOutcome:
+    def _put(self, outcome: SceneOutcome, token: str) -> SceneOutcome:
         place = self._settings.place
         if outcome.status == "failed":
-            place.discard(outcome.name, request.token)
+            place.discard(outcome.name, token)
             return outcome
         try:
-            place.put(outcome.name, request.token, durable=self._settings.job.run.durable)
+            place.put(outcome.name, token, durable=self._settings.job.run.durable)
         except GroundglowError as error:
             return replace(outcome, status="failed", reason=str(error), folder="")
         self._log.tell("put in place", scene=outcome.name, folder=outcome.folder)

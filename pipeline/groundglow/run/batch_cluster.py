@@ -15,6 +15,8 @@ from groundglow.run.scheduler_cluster import Cluster
 
 # Scenes under way for each thread of the cluster, and at most: each takes a waiting thread here.
 _AHEAD = 2
+# A scene of more pixels is spread by blocks instead of being given to one worker.
+LARGEST_UNIT = 16 * 1024 * 1024
 _MOST_AT_ONCE = 256
 
 
@@ -38,13 +40,14 @@ class ClusterRunner:
         self._cluster = Cluster(address)
         self.workers = self._cluster.workers
         self.at_once = min(_AHEAD * self.workers, _MOST_AT_ONCE)
+        self.may_leave = True
         self._shared = place.put_by_maker or self._see_the_place(place)
 
     def make(self, request: SceneRequest, progress: Progress) -> SceneReply:
         """See :class:`groundglow.run.batch.Runner`."""
         if self._shared:
             try:
-                reply = self._cluster.call(make_scene_on_worker, request)
+                reply = self._cluster.call(make_scene_on_worker, request, LARGEST_UNIT)
             except LostWorkerError as error:
                 return _lost(request, error)
             if reply.outcome is not None:

@@ -11,6 +11,7 @@ import traceback
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
+from uuid import uuid4
 
 from groundglow.errors import ConfigError, GroundglowError
 from groundglow.raster.fingerprint import container
@@ -29,9 +30,6 @@ from groundglow.run.scene_run import build_scene
 from groundglow.run.scheduler import InTurn, Scheduler
 from groundglow.scene.open import open_scene
 from groundglow.scene.stac import read_item
-
-# A scene of more pixels is spread by blocks instead of being given to one worker.
-LARGEST_UNIT = 16 * 1024 * 1024
 
 
 @dataclass(frozen=True)
@@ -70,8 +68,8 @@ class SceneReply:
     ----------
     outcome : SceneOutcome or None
         None where the scene was too large to be made in one piece.
-    built : bool
-        Whether a built scene waits to be put in place.
+    built : str
+        Token of the built scene that waits to be put in place; empty without one.
     seen : Seen or None
         What to remember; the outputs' stamps are still missing.
     may_pass : bool
@@ -83,7 +81,7 @@ class SceneReply:
     """
 
     outcome: SceneOutcome | None
-    built: bool = False
+    built: str = ""
     seen: Seen | None = None
     may_pass: bool = False
     usage: bool = False
@@ -151,9 +149,14 @@ def make_scene(
         return _failed(request, account, reason, transient=may_pass(error), usage=False)
 
 
-def make_scene_on_worker(request: SceneRequest) -> SceneReply:
-    """Make one scene of moderate size within the calling thread of a cluster's worker."""
-    return make_scene(request, InTurn(), Quiet(), largest=LARGEST_UNIT)
+def make_scene_on_worker(request: SceneRequest, largest: int) -> SceneReply:
+    """Make one scene of at most so many pixels within the calling thread of a cluster's worker.
+
+    A cluster may run the same work twice, when it believes a worker dead that is not: each run builds in a
+    folder of its own, and the reply says in which.
+    """
+    own = replace(request, token=f"{request.token}-{uuid4().hex[:8]}")
+    return make_scene(own, InTurn(), Quiet(), largest=largest)
 
 
 def _made(
@@ -195,7 +198,9 @@ def _made(
         place.put(plan.name, request.token, durable=job.run.durable)
         account.tell("put in place")
     outcome = replace(outcome, address=request.entry.address, seconds=account.seconds)
-    return SceneReply(outcome, built=not place.put_by_maker, seen=seen, events=tuple(account.events))
+    return SceneReply(
+        outcome, built="" if place.put_by_maker else request.token, seen=seen, events=tuple(account.events)
+    )
 
 
 def _why(request: SceneRequest, name: str, fingerprint: SceneFingerprint) -> str | None:

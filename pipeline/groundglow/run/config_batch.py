@@ -30,6 +30,14 @@ class Select(Document):
         None, gt=0.0, le=100.0, description="Cloud cover as the provider states it. [%]"
     )
 
+    @field_validator("since", "until", mode="before")
+    @classmethod
+    def _day(cls, value: object) -> object:
+        # A day in quotes is the day, not its midnight.
+        return (
+            date.fromisoformat(value) if isinstance(value, str) and len(value) == len("2026-07-14") else value
+        )
+
     @field_validator("since", "until")
     @classmethod
     def _has_an_offset(cls, value: datetime | date | None) -> datetime | date | None:

@@ -157,10 +157,10 @@ def publish(output: Path, name: str, token: str = "", *, durable: bool = False) 
 
 
 def discard(output: Path, name: str | None, token: str = "") -> None:
-    """Remove what was built of a scene that will not be finished; without a name, what bears the token."""
+    """Remove what was built of a scene that will not be finished; without a name, what the token begins."""
     folders = [output / _BUILDING.format(name=name, token=token)]
     if name is None:
-        folders = list(output.glob(_BUILDING.format(name="*", token=token)))
+        folders = list(output.glob(_BUILDING.format(name="*", token=f"{token}*")))
     for folder in folders:
         shutil.rmtree(folder, ignore_errors=True)
 
