@@ -26,6 +26,7 @@ from groundglow.scene.open import open_scene
 from groundglow.stages.atmosphere import atmosphere
 from groundglow.stages.brightness_temperature import brightness_temperature
 from groundglow.stages.emissivity import emissivity
+from groundglow.stages.flags import flagged
 from groundglow.stages.flux import flux
 from groundglow.stages.layers import layers
 from groundglow.stages.radiance import Calibration, radiance
@@ -39,6 +40,7 @@ __all__ = [
     "atmosphere",
     "brightness_temperature",
     "emissivity",
+    "flagged",
     "flux",
     "layers",
     "open_scene_dataset",

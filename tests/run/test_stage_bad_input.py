@@ -151,6 +151,32 @@ def test_a_file_where_the_folder_should_be(scene: InventedScene, tmp_path: Path)
     assert place.read_text() == "mine"
 
 
+@pytest.mark.parametrize("inside", ["holiday.jpg", "scans/night.tif"])
+def test_a_folder_of_something_else_is_never_replaced(
+    scene: InventedScene, tmp_path: Path, inside: str
+) -> None:
+    mine = tmp_path / "mine"
+    (mine / inside).parent.mkdir(parents=True, exist_ok=True)
+    (mine / inside).write_text("mine")
+    arguments = ("--scene", scene.scene_file, "--output", mine)
+    found = groundglow("radiance", scene.job_file, *arguments)
+    assert (found.code, "the folder holds what no stage wrote" in found.err) == (3, True)
+    assert (mine / inside).read_text() == "mine"
+    assert [path.name for path in tmp_path.iterdir()] == ["mine"]
+
+
+def test_an_empty_folder_and_a_roundabout_name_will_do(scene: InventedScene, tmp_path: Path) -> None:
+    # Workflow managers make the folders of declared outputs beforehand.
+    (tmp_path / "made").mkdir()
+    place = tmp_path / "elsewhere" / ".." / "made"
+    assert groundglow("radiance", scene.job_file, "--scene", scene.scene_file, "-o", place, "-q").code == 0
+    assert sorted(path.name for path in (tmp_path / "made").iterdir()) == [
+        "quality.tif",
+        "radiance.tif",
+        "stage.json",
+    ]
+
+
 def test_a_folder_below_a_file(scene: InventedScene, tmp_path: Path) -> None:
     (tmp_path / "taken").write_text("mine")
     found = groundglow(

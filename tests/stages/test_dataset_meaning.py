@@ -94,3 +94,20 @@ def test_geographic_coordinates_are_degrees() -> None:
 
 def test_utm_is_the_reference_system_of_the_painted_rasters() -> None:
     assert grid_of(xr.Dataset(coords=coordinates(grid(4, 4)))).crs == UTM
+
+
+def test_every_stage_gives_the_grid_it_was_given(tmp_path: Path) -> None:
+    plan = api.plan(paint_scene(tmp_path).job_file)
+    work = plan.work
+    found = api.open_scene_dataset(plan, chunks=64)
+    assert grid_of(found) == work.grid
+    for step in (
+        lambda one: api.brightness_temperature(one, work.settings),
+        lambda one: api.emissivity(one, work.emissivity),
+        lambda one: api.atmosphere(one, work.air, work.settings.weighting),
+        lambda one: api.surface_temperature(one, work.settings),
+        api.flux,
+        lambda one: api.layers(one, ["emitted_flux"]),
+    ):
+        found = step(found)
+        assert grid_of(found) == work.grid

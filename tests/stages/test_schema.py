@@ -100,6 +100,15 @@ def test_layers_and_flags_that_do_not_exist(scene: xr.Dataset) -> None:
         api.layers(scene, ["radiance"], ["fog"])
 
 
+def test_flags_are_asked_for_by_name(scene: xr.Dataset) -> None:
+    # The painted cloud covers rows 40 to 49 and columns 60 to 74; one pixel is saturated.
+    cloud = api.flagged(scene, "cloud")
+    assert cloud.chunks is not None
+    assert int(cloud.sum()) == 150
+    assert int(api.flagged(scene, "cloud", "saturated").sum()) == 151
+    assert "there is no flag 'fog'" in message(api.flagged, scene, "fog")
+
+
 def test_layers_that_were_not_made(scene: xr.Dataset, tmp_path: Path) -> None:
     assert "emitted_flux: needed in 'W m-2', missing" in message(api.layers, scene, ["emitted_flux"])
     with pytest.raises(InputError, match="sky_flux: needed in 'W m-2', missing"):

@@ -7,6 +7,7 @@ workflow manager finds a stage's output whole or not at all; making it again rep
 from __future__ import annotations
 
 import fcntl
+import os
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass
@@ -132,9 +133,9 @@ def stage_folder(output: Path) -> Iterator[Path]:
     OutputError
         If it cannot be made or put in place.
     """
-    parent, name = output.absolute().parent, output.name
-    if output.is_file():
-        raise OutputError("this is a file, and a folder is to be written", where=str(output))
+    place = Path(os.path.normpath(output.absolute()))
+    parent, name = place.parent, place.name
+    _refuse_to_replace(place)
     with output_errors(output):
         parent.mkdir(parents=True, exist_ok=True)
     with terminable(), _sole_writer(parent / f".{name}.lock", output):
@@ -146,6 +147,26 @@ def stage_folder(output: Path) -> Iterator[Path]:
             # Interrupts included: a stage's output is whole or not there.
             discard(parent, name)
             raise
+
+
+def _refuse_to_replace(place: Path) -> None:
+    """A stage replaces its own earlier output, or an empty folder: never a file, nor a folder of something else."""
+    if not place.name:
+        raise OutputError(
+            "this is no folder of its own", where=str(place), remedy="Name a folder to be written"
+        )
+    if place.is_file():
+        raise OutputError("this is a file, and a folder is to be written", where=str(place))
+    with output_errors(place):
+        entries = list(place.iterdir()) if place.is_dir() else []
+    names = {entry.name for entry in entries}
+    layers = "quality.tif" in names and any(name.endswith(".json") for name in names)
+    if entries and (any(entry.is_dir() for entry in entries) or not (RECORD in names or layers)):
+        raise OutputError(
+            "the folder holds what no stage wrote, and it would be replaced",
+            where=str(place),
+            remedy="Name a folder that is new, empty, or a stage's earlier output",
+        )
 
 
 @contextmanager
@@ -164,7 +185,7 @@ def _sole_writer(lock: Path, output: Path) -> Iterator[None]:
         except OSError:
             raise busy from None
         # The file may have been removed by the one who held it before, between our opening and locking it.
-        if not lock.exists() or not lock.samefile(f"/proc/self/fd/{handle.fileno()}"):
+        if not lock.exists() or not os.path.samestat(lock.stat(), os.fstat(handle.fileno())):
             raise busy
         try:
             yield
