@@ -259,3 +259,12 @@ def test_nothing_is_written(scene: InventedScene) -> None:
     explain(scene, *centre(20, 80))
     assert sorted(path.name for path in scene.folder.rglob("*")) == before
     assert np.isfinite(scene.temperature).all()
+
+
+def test_every_scene_of_a_job_that_holds_the_point_tells_its_story(tmp_path: Path) -> None:
+    scene = paint_scene(tmp_path)
+    second = scene.scene_file.read_text().replace('name = "invented"', 'name = "later"')
+    (tmp_path / "later.toml").write_text(second)
+    job = scene.job_file.read_text().replace('scenes = "scene.toml"', 'scenes = ["scene.toml", "later.toml"]')
+    scene.job_file.write_text(job)
+    assert [story["scene"] for story in stories(scene, *centre(20, 80))] == ["invented", "later"]

@@ -16,7 +16,9 @@ from groundglow.run.explain import Story, explain_pixel
 from groundglow.run.explain_points import Point, one_point, outside, pixel_of, read_points
 from groundglow.run.plan import plan_scene
 from groundglow.run.table import aligned
+from groundglow.scene.model import Scene
 from groundglow.scene.open import open_scene
+from groundglow.scene.stac import read_item
 from groundglow.stages.variables import VARIABLES
 
 _TITLES = {"sensor": "at the sensor", "emissivity": "ground", "atmosphere": "air", "surface": "surface"}
@@ -50,8 +52,8 @@ def explain_job(
     job = read_job(path)
     stories, grids = [], []
     missing = dict.fromkeys(asked)
-    for address in _scenes(job, path.parent, scene):
-        found, grid = _stories(job, path.parent, address, asked)
+    for one in _scenes(job, path.parent, scene):
+        found, grid = _stories(job, path.parent, one, asked)
         grids.append(grid)
         stories += [story for _, story in found]
         for point, _ in found:
@@ -90,18 +92,21 @@ def story_text(story: Story) -> str:
     return "\n\n".join(parts)
 
 
-def _scenes(job: Job, folder: Path, scene: str | None) -> Iterator[str]:
+def _scenes(job: Job, folder: Path, scene: str | None) -> Iterator[Scene]:
     if scene is not None:
-        yield scene
+        yield open_scene(scene)
         return
     for entry in wanted_scenes(job, folder):
-        yield entry.address
+        if entry.item is None:
+            yield open_scene(entry.address)
+        else:
+            yield read_item(entry.item, entry.list_address)
 
 
 def _stories(
-    job: Job, folder: Path, address: str, asked: list[Point]
+    job: Job, folder: Path, scene: Scene, asked: list[Point]
 ) -> tuple[list[tuple[Point, Story]], tuple[str, Grid]]:
-    plan = plan_scene(job, folder, open_scene(address))
+    plan = plan_scene(job, folder, scene)
     found = []
     for point in asked:
         pixel = pixel_of(point, plan.work.grid)
