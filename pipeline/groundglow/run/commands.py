@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import os
 import sys
 import time
 from collections.abc import Iterable, Iterator
@@ -218,7 +219,8 @@ def _say_failure(outcome: SceneOutcome) -> None:
 def _output(job: Job, folder: Path, output: str | None) -> str:
     if output is not None:
         return output
-    return job.output if "://" in job.output else str(folder / job.output)
+    # "configs/../out" is the same place as "out", and reads worse.
+    return job.output if "://" in job.output else os.path.normpath(folder / job.output)
 
 
 def _first_known(entries: Iterator[SceneEntry]) -> Iterator[SceneEntry]:

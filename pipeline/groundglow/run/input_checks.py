@@ -55,10 +55,14 @@ def _meets(one: Grid, other: Grid) -> bool:
         except RasterioError:
             return True
     west, south, east, north = _bounds(other)
+    if not (bottom < north and top > south):
+        return False
     if right < left:
         # The outline crosses the antimeridian: it spans the whole turn in the other's numbers.
-        return bottom < north and top > south
-    return left < east and right > west and bottom < north and top > south
+        return True
+    # Longitudes may be counted from -180 or from 0: a whole turn apart is the same place.
+    turns = (-360.0, 0.0, 360.0) if other.crs.is_geographic else (0.0,)
+    return any(left + turn < east and right + turn > west for turn in turns)
 
 
 def _bounds(grid: Grid) -> Bounds:
