@@ -87,7 +87,7 @@ class Memory:
 
     def keep(self, address: str, seen: Seen) -> None:
         """Remember a look, unless a file changed so lately that its stamp proves nothing."""
-        if self._base is None or self._read_only or not settled(seen.inputs):
+        if self._base is None or self._read_only or not seen.outputs or not settled(seen.inputs):
             return
         with contextlib.suppress(sqlite3.Error):
             self._base.execute("REPLACE INTO seen VALUES (?, ?)", (_key(address), json.dumps(asdict(seen))))

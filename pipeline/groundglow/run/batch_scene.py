@@ -20,7 +20,7 @@ from groundglow.run.batch_memory import Seen
 from groundglow.run.batch_select import left_out, place_of_scene
 from groundglow.run.batch_state import Stamp, description_files, stamp, stamps, why_changed
 from groundglow.run.config import Job
-from groundglow.run.fingerprint import SceneFingerprint, scene_fingerprint
+from groundglow.run.fingerprint import SceneFingerprint, scene_fingerprint, tag_now
 from groundglow.run.outcome import SceneOutcome, describe_grid
 from groundglow.run.plan import ScenePlan, plan_scene
 from groundglow.run.progress import Progress, Quiet
@@ -235,7 +235,7 @@ def _built(
             plan, fingerprint, folder, scheduler, progress,
             place=place.folder(plan.name), durable=request.job.run.durable,
         )  # fmt: skip
-        _refuse_changed_inputs(before)
+        _refuse_changed_inputs(before, fingerprint)
     except BaseException:
         # Interrupts included: a reader must never find half a scene.
         place.discard(plan.name, request.token)
@@ -249,11 +249,12 @@ def _input_stamps(plan: ScenePlan) -> dict[str, Stamp | None]:
     return stamps(sorted(files))
 
 
-def _refuse_changed_inputs(before: dict[str, Stamp | None]) -> None:
+def _refuse_changed_inputs(before: dict[str, Stamp | None], fingerprint: SceneFingerprint) -> None:
     """The checksums that go into the provenance must be those of what was read."""
-    for path, known in before.items():
-        if stamp(path) != known:
-            raise ChangedInputError("was replaced while the scene was made", where=path)
+    changed = [path for path, known in before.items() if stamp(path) != known]
+    changed += [one.path for one in fingerprint.inputs if one.tag is not None and tag_now(one) != one.tag]
+    if changed:
+        raise ChangedInputError("was replaced while the scene was made", where=changed[0])
 
 
 def _failed(

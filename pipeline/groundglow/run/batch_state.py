@@ -145,9 +145,9 @@ def why_changed(item: Mapping[str, Any], fingerprint: SceneFingerprint) -> str |
     if known.get("fingerprint") == fingerprint.digest:
         return None
     reasons = [*_version_reason(item), *_configuration_reasons(known, fingerprint.configuration)]
-    before = {(one["role"], one["sha256"]) for one in known.get("inputs", [])}
-    after = {(one.role, one.sha256) for one in fingerprint.inputs}
-    reasons += [f"input {role} changed" for role in sorted({role for role, _ in before ^ after})]
+    before = {(one["role"], one["sha256"], one.get("entity_tag")) for one in known.get("inputs", [])}
+    after = {(one.role, one.sha256, one.tag) for one in fingerprint.inputs}
+    reasons += [f"input {role} changed" for role in sorted({role for role, *_ in before ^ after})]
     return "; ".join(reasons) or "the scene's description, its sensor or coefficient data changed"
 
 

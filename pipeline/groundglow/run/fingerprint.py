@@ -31,18 +31,29 @@ class InputRecord:
     path : str
         As the scene or job named it.
     size : int or None
-        [byte]; None for addresses.
+        [byte]
     sha256 : str or None
+        None for what is not a local file.
+    tag : str or None
+        What the server of a remote input says to tell its states apart.
     """
 
     role: str
     path: str
     size: int | None
     sha256: str | None
+    tag: str | None = None
 
     def as_json(self) -> dict[str, Any]:
         """In the words of the Item's provenance."""
-        return {"role": self.role, "path": self.path, "size": self.size, "sha256": self.sha256}
+        known = {"role": self.role, "path": self.path, "size": self.size, "sha256": self.sha256}
+        return known if self.tag is None else known | {"entity_tag": self.tag}
+
+    def identity(self) -> list[Any]:
+        """What decides: role and content; where its checksum is not known, path and tag."""
+        if self.sha256 is not None:
+            return [self.role, self.size, self.sha256]
+        return [self.role, self.size, self.path, self.tag]
 
 
 @dataclass(frozen=True)
@@ -80,17 +91,11 @@ def scene_fingerprint(job: Job, plan: ScenePlan) -> SceneFingerprint:
     InputError
         If an input is missing or cannot be read.
     """
-    inputs = tuple(
-        InputRecord(role, one.path, one.size, one.sha256)
-        for role, source in plan.inputs()
-        for one in _files(source)
-    )
+    inputs = tuple(_record(role, one) for role, source in plan.inputs() for one in _files(source))
     configuration = decisive_configuration(job)
     decisive = {
         "version": __version__,
-        "inputs": sorted(
-            (one.role, one.size, one.sha256, one.path if one.sha256 is None else "") for one in inputs
-        ),
+        "inputs": sorted((one.identity() for one in inputs), key=repr),
         "configuration": configuration,
         "scene": [plan.scene.name, plan.scene.acquired.isoformat(), plan.scene.sensor.name],
         "work": plain(plan.work),
@@ -130,6 +135,26 @@ def plain(value: object) -> Any:
     if isinstance(value, np.generic):
         return repr(value.item())
     raise TypeError(f"{type(value).__name__} has no plain form")
+
+
+def tag_now(record: InputRecord) -> str | None:
+    """The tag that the server of a remote input gives it now.
+
+    Raises
+    ------
+    InputError
+        If the server does not have it or does not answer.
+    """
+    return _record(record.role, Fingerprint(record.path, None, None)).tag
+
+
+def _record(role: str, found: Fingerprint) -> InputRecord:
+    if found.sha256 is not None:
+        return InputRecord(role, found.path, found.size, found.sha256)
+    from groundglow.run.fingerprint_remote import remote_state  # noqa: PLC0415  (most inputs are local)
+
+    size, tag = remote_state(found.path)
+    return InputRecord(role, found.path, size, None, tag)
 
 
 def _files(source: RasterSource) -> list[Fingerprint]:

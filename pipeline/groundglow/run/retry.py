@@ -30,6 +30,10 @@ class LostWorkerError(GroundglowError):
     """A worker of the cluster died again and again over the same piece of work."""
 
 
+class LostStoreError(OutputError):
+    """An object store did not answer, or not as it should."""
+
+
 class StoppedError(GroundglowError):
     """The run was asked to end before this was finished."""
 
@@ -48,7 +52,7 @@ def may_pass(error: BaseException) -> bool:
     -------
     bool
     """
-    if isinstance(error, ChangedInputError | LostWorkerError):
+    if isinstance(error, ChangedInputError | LostWorkerError | LostStoreError):
         return True
     if isinstance(error, ConfigError | DomainError | OutputError):
         return False

@@ -172,4 +172,6 @@ def _local_cluster(address: str) -> Any:
             f"{text!r} is not a number of processes", where="--scheduler", remedy="For example: processes:4"
         )
     count = int(text) if text else available_cores()
-    return LocalCluster(n_workers=count, threads_per_worker=1, dashboard_address="127.0.0.1:0", processes=True)
+    return LocalCluster(
+        n_workers=count, threads_per_worker=1, dashboard_address="127.0.0.1:0", processes=True
+    )
