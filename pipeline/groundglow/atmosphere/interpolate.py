@@ -18,19 +18,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from groundglow.atmosphere.grid import AirTerms, AtmosphereGrid
+from groundglow.atmosphere.interpolate_kernels import LANES, interpolate_pixels, interpolate_rows
 from groundglow.errors import DomainError
-from groundglow.kernels import kernel
 
 Float = NDArray[np.float64]
 Float32 = NDArray[np.float32]
-Reals = NDArray[np.floating]
-Cells = NDArray[np.signedinteger]
-Steps = NDArray[np.uintp]
-
-# Fields are padded with zeros to a multiple of this, so that the innermost loop is whole vectors.
-_LANES = 8
-# Pixels that are interpolated before their fields are spread over the output planes.
-_RUN = 64
 
 
 @dataclass(frozen=True)
@@ -92,7 +84,7 @@ def pack(grid: AtmosphereGrid) -> AirStack:
     """Lay the terms of a grid out as float32 with the fields of each node side by side."""
     groups = [_fields_of(terms) for terms in (grid.terms, *grid.causes.values())]
     fields = np.concatenate(groups, axis=0)
-    lanes = -(-fields.shape[0] // _LANES) * _LANES
+    lanes = -(-fields.shape[0] // LANES) * LANES
     values = np.zeros((*fields.shape[1:], lanes), dtype=np.float32)
     values[..., : fields.shape[0]] = np.moveaxis(fields, 0, -1)
     return AirStack(
@@ -144,7 +136,7 @@ def interpolate(
     across, row_cell, row_share, column_cell, column_share = _map_position(stack, x, y)
     heights, secants, values, height_nodes, secant_nodes = _coordinates(stack, height, secant, across)
     out = _output(stack, across, out)
-    _interpolate_rows(
+    interpolate_rows(
         values, height_nodes, secant_nodes, row_cell, row_share, column_cell, column_share,
         heights, secants, out,
     )  # fmt: skip
@@ -185,7 +177,7 @@ def interpolate_anywhere(
     across = (x.shape[0], x.shape[1])
     heights, secants, values, height_nodes, secant_nodes = _coordinates(stack, height, secant, across)
     out = _output(stack, across, out)
-    _interpolate_pixels(values, stack.x, stack.y, height_nodes, secant_nodes, x, y, heights, secants, out)
+    interpolate_pixels(values, stack.x, stack.y, height_nodes, secant_nodes, x, y, heights, secants, out)
     return out
 
 
@@ -281,153 +273,3 @@ def _output(stack: AirStack, across: tuple[int, int], out: Float32 | None) -> Fl
     if out.shape != wanted or out.dtype != np.float32 or not out.flags.c_contiguous:
         raise DomainError(f"the output of the interpolation must be contiguous float32 {wanted}")
     return out
-
-
-@kernel(inline=True)
-def _find(coordinate: Reals, nodes: Reals, cell: Cells, share: Float32, count: int) -> None:
-    """Cell and share of each coordinate along an axis, by counting the inner nodes below it."""
-    last = nodes.size - 1
-    zero, one = np.float32(0.0), np.float32(1.0)
-    for j in range(count):
-        cell[j] = 0
-    for k in range(1, last):
-        node = nodes[k]
-        for j in range(count):
-            cell[j] += np.int32(coordinate[j] >= node)
-    for j in range(count):
-        low = nodes[cell[j]]
-        along = np.float32((coordinate[j] - low) / (nodes[cell[j] + 1] - low))
-        # Comparisons are false for NaN, which therefore stays.
-        share[j] = zero if along < zero else one if along > one else along
-
-
-@kernel(inline=True)
-def _gather(
-    flat: Float32, base: np.uintp, steps: Steps, weights: Float32, corners: int, groups: int,
-    scratch: Float32, start: np.uintp,
-) -> None:  # fmt: skip
-    """Weighted sum of the corners' fields, into ``scratch`` from ``start`` on."""
-    for group in range(groups):
-        node = base + np.uintp(8 * group)
-        lane = start + np.uintp(8 * group)
-        weight = weights[0]
-        for k in range(8):
-            scratch[lane + np.uintp(k)] = weight * flat[node + np.uintp(k)]
-        for corner in range(1, corners):
-            weight = weights[corner]
-            other = node + steps[corner]
-            for k in range(8):
-                scratch[lane + np.uintp(k)] += weight * flat[other + np.uintp(k)]
-
-
-@kernel(inline=True)
-def _run_of_pixels(
-    flat: Float32, sizes: NDArray[np.int64], cells: Cells, shares: Float32, first: int, last: int,
-    scratch: Float32, steps: Steps, weights: Float32, out: Float32, row: int,
-) -> None:  # fmt: skip
-    """Interpolate the pixels ``first`` to ``last`` of one row and spread their fields over the planes."""
-    lanes = np.uintp(sizes[4])
-    groups = sizes[4] // 8
-    one = np.float32(1.0)
-    stride = np.uintp(sizes[4])
-    corners = 1
-    steps[0] = np.uintp(0)
-    active = 0
-    strides = steps[16:]
-    order = cells[4]
-    for axis in range(3, -1, -1):
-        if sizes[axis] > 1:
-            strides[active] = stride
-            order[active] = axis
-            for corner in range(corners):
-                steps[corners + corner] = steps[corner] + stride
-            corners *= 2
-            active += 1
-        stride *= np.uintp(sizes[axis])
-    for j in range(first, last):
-        base = np.uintp(0)
-        weights[0] = one
-        count = 1
-        for a in range(active):
-            axis = order[a]
-            base += np.uintp(cells[axis, j]) * strides[a]
-            high = shares[axis, j]
-            low = one - high
-            for corner in range(count):
-                weights[count + corner] = weights[corner] * high
-                weights[corner] *= low
-            count *= 2
-        _gather(flat, base, steps, weights, corners, groups, scratch, np.uintp(j - first) * lanes)
-    for field in range(out.shape[0]):
-        for j in range(last - first):
-            out[field, row, first + j] = scratch[np.uintp(j) * lanes + np.uintp(field)]
-
-
-@kernel(
-    "void(float32[:, :, :, :, ::1], float32[::1], float32[::1], intp[::1], float32[::1], intp[::1], "
-    "float32[::1], float32[:, ::1], float32[:, ::1], float32[:, :, ::1])"
-)
-def _interpolate_rows(
-    values: Float32, height_nodes: Float32, secant_nodes: Float32, row_cell: Cells, row_share: Float32,
-    column_cell: Cells, column_share: Float32, heights: Float32, secants: Float32, out: Float32,
-) -> None:  # fmt: skip
-    places_y, places_x, node_heights, node_secants, lanes = values.shape
-    rows, cols = out.shape[1], out.shape[2]
-    sizes = np.empty(5, dtype=np.int64)
-    sizes[:] = (1, places_x, node_heights, node_secants, lanes)
-    cells = np.zeros((5, max(cols, 8)), dtype=np.int32)
-    shares = np.zeros((4, cols), dtype=np.float32)
-    for j in range(cols):
-        cells[1, j] = column_cell[j]
-        shares[1, j] = column_share[j]
-    scratch = np.empty(_RUN * lanes, dtype=np.float32)
-    steps = np.empty(24, dtype=np.uintp)
-    weights = np.empty(16, dtype=np.float32)
-    table = values[0].copy().reshape(-1)
-    plane = table.size
-    flat = values.reshape(-1)
-    one = np.float32(1.0)
-    for row in range(rows):
-        if places_y > 1:
-            low = row_cell[row] * plane
-            share = row_share[row]
-            for k in range(plane):
-                table[k] = (one - share) * flat[low + k] + share * flat[low + plane + k]
-        if node_heights > 1:
-            _find(heights[row], height_nodes, cells[2], shares[2], cols)
-        if node_secants > 1:
-            _find(secants[row], secant_nodes, cells[3], shares[3], cols)
-        for first in range(0, cols, _RUN):
-            last = min(first + _RUN, cols)
-            _run_of_pixels(table, sizes, cells, shares, first, last, scratch, steps, weights, out, row)
-
-
-@kernel(
-    "void(float32[:, :, :, :, ::1], float64[::1], float64[::1], float32[::1], float32[::1], "
-    "float64[:, ::1], float64[:, ::1], float32[:, ::1], float32[:, ::1], float32[:, :, ::1])"
-)
-def _interpolate_pixels(
-    values: Float32, nodes_x: Float, nodes_y: Float, height_nodes: Float32, secant_nodes: Float32,
-    x: Float, y: Float, heights: Float32, secants: Float32, out: Float32,
-) -> None:  # fmt: skip
-    rows, cols = out.shape[1], out.shape[2]
-    sizes = np.empty(5, dtype=np.int64)
-    sizes[:] = values.shape
-    cells = np.zeros((5, max(cols, 8)), dtype=np.int32)
-    shares = np.zeros((4, cols), dtype=np.float32)
-    scratch = np.empty(_RUN * sizes[4], dtype=np.float32)
-    steps = np.empty(24, dtype=np.uintp)
-    weights = np.empty(16, dtype=np.float32)
-    flat = values.reshape(-1)
-    for row in range(rows):
-        if sizes[0] > 1:
-            _find(y[row], nodes_y, cells[0], shares[0], cols)
-        if sizes[1] > 1:
-            _find(x[row], nodes_x, cells[1], shares[1], cols)
-        if sizes[2] > 1:
-            _find(heights[row], height_nodes, cells[2], shares[2], cols)
-        if sizes[3] > 1:
-            _find(secants[row], secant_nodes, cells[3], shares[3], cols)
-        for first in range(0, cols, _RUN):
-            last = min(first + _RUN, cols)
-            _run_of_pixels(flat, sizes, cells, shares, first, last, scratch, steps, weights, out, row)
