@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 import json
 from pathlib import Path
 
@@ -244,3 +245,24 @@ def test_sensor_below_the_terrain_is_refused(tmp_path: Path) -> None:
     finished = groundglow("run", scene.job_file)
     assert finished.code == 3, finished.err
     assert "ground" in finished.err
+
+
+def test_files_that_decide_are_in_the_provenance_with_their_checksums(tmp_path: Path) -> None:
+    scene = paint_scene(tmp_path)
+    rows = ["pressure_hPa,temperature_degC,dew_point_degC"]
+    rows += [f"{1000 - 10 * i},{22 - 0.55 * i:.2f},{12 - 0.9 * i:.2f}" for i in range(40)]
+    (tmp_path / "sounding.csv").write_text("\n".join(rows))
+    add_land_cover(scene, np.full(scene.counts.shape, 3, np.uint8), 1)
+    (tmp_path / "table.csv").write_text(TABLE)
+    scene.write_job(
+        ground=LAND_COVER,
+        air='[atmosphere]\nsource = "sounding"\npath = "sounding.csv"\nground_height = 110\n',
+    )
+    run(scene)
+    inputs = {one["role"]: one for one in item(scene)["inputs"]}
+    for role, name in (("atmosphere", "sounding.csv"), ("class_table", "table.csv")):
+        assert inputs[role]["sha256"] == hashlib.sha256((tmp_path / name).read_bytes()).hexdigest()
+    # What decides is looked at again: another sounding makes the scene anew.
+    (tmp_path / "sounding.csv").write_text("\n".join(rows).replace("22.00", "23.00"))
+    assert run(scene)["scenes"][0]["status"] == "done"
+    assert run(scene)["scenes"][0]["status"] == "up to date"

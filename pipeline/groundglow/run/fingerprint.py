@@ -91,7 +91,8 @@ def scene_fingerprint(job: Job, plan: ScenePlan) -> SceneFingerprint:
     InputError
         If an input is missing or cannot be read.
     """
-    inputs = tuple(_record(role, one) for role, source in plan.inputs() for one in _files(source))
+    rasters = [_record(role, one) for role, source in plan.inputs() for one in _files(source)]
+    inputs = (*rasters, *(_record(role, fingerprint(str(path))) for role, path in plan.files))
     configuration = decisive_configuration(job)
     decisive = {
         "version": __version__,

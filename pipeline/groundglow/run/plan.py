@@ -54,6 +54,8 @@ class ScenePlan:
     air : Air or None
     method : mapping
         What was chosen, for the provenance.
+    files : tuple of (str, Path)
+        Files besides rasters that were read for the choices, each with what it is used for.
     temperature_unit : str
         "celsius" or "kelvin", for labels.
     preview : bool
@@ -66,6 +68,7 @@ class ScenePlan:
     blocks: tuple[Block, ...]
     air: Air | None
     method: Mapping[str, object]
+    files: tuple[tuple[str, Path], ...]
     temperature_unit: TemperatureUnit
     preview: bool
 
@@ -176,9 +179,19 @@ def plan_scene(job: Job, folder: Path, scene: Scene) -> ScenePlan:
         method["atmosphere"] = column_account(job.atmosphere, column)
     unit: TemperatureUnit = "celsius" if job.layers.celsius else "kelvin"
     blocks = tuple(grid.blocks(job.run.block))
-    plan = ScenePlan(scene, band, work, blocks, air, method, unit, job.layers.preview)
+    plan = ScenePlan(
+        scene, band, work, blocks, air, method, _files(job, folder, air), unit, job.layers.preview
+    )
     check_inputs(plan.inputs(), grid)
     return plan
+
+
+def _files(job: Job, folder: Path, air: Air | None) -> tuple[tuple[str, Path], ...]:
+    found = [("atmosphere", path) for path in air.files] if air is not None else []
+    table = getattr(job.emissivity, "class_table", None)
+    if table is not None:
+        found.append(("class_table", folder / table))
+    return tuple(found)
 
 
 def _chosen_band(job: Job, scene: Scene) -> ThermalBand:
