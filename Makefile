@@ -6,7 +6,7 @@ VENV ?= .venv
 BIN := $(VENV)/bin
 
 .DEFAULT_GOAL := help
-.PHONY: help demo test lint check benchmark clean need-python
+.PHONY: help demo test test-workflows lint check benchmark soak clean need-python
 
 help:  ## Show this list
 	@grep -E '^[a-z-]+:.*##' $(MAKEFILE_LIST) | awk -F ':.*## ' '{printf "  make %-10s %s\n", $$1, $$2}'
@@ -16,6 +16,9 @@ demo: $(VENV)/.runs  ## Install, map the demo scene, print what came out
 
 test: $(VENV)/.develops  ## Install with the development extras, run the whole test suite
 	$(BIN)/python -m pytest
+
+test-workflows: $(VENV)-workflows/.made  ## Run the Snakemake and CWL workflows for real, in an environment of their own
+	$(VENV)-workflows/bin/python -m pytest configs/workflows/tests
 
 lint: $(VENV)/.develops  ## Style, strict types, and the import-layer check
 	$(BIN)/ruff check .
@@ -28,8 +31,13 @@ check: lint test  ## Everything that continuous integration runs
 benchmark: $(VENV)/.develops  ## Speed and memory against GDAL's own driver and plain NumPy (minutes)
 	$(BIN)/python benchmarks/main_job.py
 
+soak: $(VENV)/.develops  ## Many kills, a long night, one very large raster; how planning grows (an hour)
+	$(BIN)/python benchmarks/soak.py
+	$(BIN)/python benchmarks/scheduler_cost.py
+	$(BIN)/python benchmarks/plan_scale.py
+
 clean:  ## Remove the virtual environment, build products and the demo's output
-	rm -rf $(VENV) out build dist .pytest_cache .mypy_cache .ruff_cache .import_linter_cache .hypothesis
+	rm -rf $(VENV) $(VENV)-workflows out build dist .pytest_cache .mypy_cache .ruff_cache .import_linter_cache .hypothesis
 	find . -name __pycache__ -type d -prune -exec rm -rf {} +
 
 # Each need is checked by name, so that a bare machine is told what to install.
@@ -49,6 +57,13 @@ $(BIN)/python: | need-python
 
 $(VENV)/.runs: pyproject.toml | $(BIN)/python
 	$(BIN)/python -m pip install --quiet --editable .
+	@touch $@
+
+# The workflow managers bring fifty packages of their own, and nothing else needs them.
+$(VENV)-workflows/.made: pyproject.toml | need-python
+	$(PYTHON) -m venv $(VENV)-workflows
+	$(VENV)-workflows/bin/python -m pip install --quiet --upgrade pip
+	$(VENV)-workflows/bin/python -m pip install --quiet --editable '.[workflows]'
 	@touch $@
 
 $(VENV)/.develops: pyproject.toml | $(BIN)/python
