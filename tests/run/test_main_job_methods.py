@@ -266,3 +266,18 @@ def test_files_that_decide_are_in_the_provenance_with_their_checksums(tmp_path: 
     (tmp_path / "sounding.csv").write_text("\n".join(rows).replace("22.00", "23.00"))
     assert run(scene)["scenes"][0]["status"] == "done"
     assert run(scene)["scenes"][0]["status"] == "up to date"
+
+
+def test_the_report_tells_the_uncertainty_by_cause(tmp_path: Path) -> None:
+    scene = paint_scene(tmp_path)
+    air = '[atmosphere]\nsource = "model"\ncolumn_water_vapour = 20\n'
+    scene.write_job('[layers]\nwrite = ["surface_temperature_uncertainty"]\n', air=air)
+    budget = run(scene)["scenes"][0]["uncertainty"]
+    assert set(budget) == {
+        "noise", "calibration", "emissivity", "water_vapour", "air_temperature", "absorption_model", "total",
+    }  # fmt: skip
+    parts = [value for name, value in budget.items() if name != "total"]
+    assert budget["total"] == pytest.approx(np.sqrt(np.sum(np.square(parts))), rel=1e-6)
+    stated = np.nanmedian(read(scene, "surface_temperature_uncertainty"))
+    assert budget["total"] == pytest.approx(stated, rel=0.1)
+    assert item(scene)["uncertainty_budget"] == budget

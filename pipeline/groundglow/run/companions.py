@@ -128,6 +128,7 @@ def _record(plan: ScenePlan, outcome: SceneOutcome, fingerprint: SceneFingerprin
             "inputs": [one.as_json() for one in fingerprint.inputs],
             "configuration": fingerprint.configuration,
             "method": dict(plan.method),
+            "uncertainty_budget": dict(outcome.uncertainty),
             "sensor": {"name": scene.sensor.name, "source": scene.sensor.source},
             "notes": list(outcome.notes),
         },

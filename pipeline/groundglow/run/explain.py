@@ -28,7 +28,7 @@ from groundglow.raster.relation import OnLattice, relation
 from groundglow.raster.source import read_block, source_grid
 from groundglow.retrieval import chain
 from groundglow.run.column import ColumnAndGround
-from groundglow.run.explain_causes import Causes, causes_with_air, causes_with_column
+from groundglow.run.explain_causes import PixelCauses, causes_with_air, causes_with_column
 from groundglow.run.plan import ScenePlan
 from groundglow.run.worker import AirAndGround, SceneWork, ground_of, radiance_and_flags
 
@@ -111,12 +111,12 @@ def explain_pixel(plan: ScenePlan, row: int, column: int, name: str = "") -> Sto
         surface = _Surface({}, {}, {})
         if isinstance(ground, AirAndGround):
             maps |= ground.maps(work, _ONE, _ONE, radiance, flags, list(QUANTITIES))
-            causes = causes_with_air(work, ground, radiance)
+            causes = causes_with_air(work, ground, radiance).at(0, 0)
             surface = _surface(ground, maps, causes, _air_numbers(plan, ground, block))
         elif isinstance(ground, ColumnAndGround):
             brightness = maps["brightness_temperature"]
             maps |= ground.maps(_ONE, _ONE, radiance, brightness, flags=flags, settings=work.settings)
-            causes = causes_with_column(work, ground, radiance, brightness)
+            causes = causes_with_column(work, ground, radiance, brightness).at(0, 0)
             surface = _surface(ground, maps, causes, {"column_water_vapour": _number(ground.water)})
     x, y = pixel_centre(work.grid, row, column)
     value = int(flags[0, 0])
@@ -155,7 +155,7 @@ class _Surface:
 
 
 def _surface(
-    ground: AirAndGround | ColumnAndGround, maps: Mapping[str, Pixels], causes: Causes, air: Numbers
+    ground: AirAndGround | ColumnAndGround, maps: Mapping[str, Pixels], causes: PixelCauses, air: Numbers
 ) -> _Surface:
     fields = ground.emissivity.window(_ONE, _ONE)
     steps: dict[str, Numbers] = {
@@ -210,7 +210,7 @@ def _sky_as_path(grid: AtmosphereGrid) -> AtmosphereGrid:
 
 
 def _flux_causes(
-    causes: Causes, fields: chain.EmissivityFields, maps: Mapping[str, Pixels]
+    causes: PixelCauses, fields: chain.EmissivityFields, maps: Mapping[str, Pixels]
 ) -> dict[str, float]:
     """The same for the emitted flux: the emissivity's error moves the temperature and the factor before it."""
     t = float(maps["surface_temperature"][0, 0])

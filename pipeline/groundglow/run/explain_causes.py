@@ -1,4 +1,4 @@
-"""What each cause of error does to one pixel's surface temperature, one at a time through the chain itself."""
+"""What each cause of error does to the surface temperature of pixels, one at a time through the chain itself."""
 
 from __future__ import annotations
 
@@ -15,21 +15,39 @@ from groundglow.run.column import ColumnAndGround
 from groundglow.run.worker import AirAndGround, SceneWork
 
 Pixels = NDArray[np.float32]
-_ONE = slice(0, 1)
 
 
 @dataclass(frozen=True)
 class Causes:
-    """Change of the temperature for one standard uncertainty of each cause. [K]
+    """Change of the temperature for one standard uncertainty of each cause; float32 arrays of one shape. [K]
 
     Attributes
     ----------
-    noise, calibration : float
-    emissivity : float
+    noise, calibration : array
+    emissivity : array
         Signed: an emissivity too high lowers the temperature.
-    air : mapping of str to float
+    air : mapping of str to array
         The causes in the air, and what the method itself adds.
     """
+
+    noise: Pixels
+    calibration: Pixels
+    emissivity: Pixels
+    air: Mapping[str, Pixels]
+
+    def at(self, row: int, column: int) -> PixelCauses:
+        """The causes of one pixel."""
+        return PixelCauses(
+            float(self.noise[row, column]),
+            float(self.calibration[row, column]),
+            float(self.emissivity[row, column]),
+            {name: float(change[row, column]) for name, change in self.air.items()},
+        )
+
+
+@dataclass(frozen=True)
+class PixelCauses:
+    """The same for one pixel, in plain numbers. [K]"""
 
     noise: float
     calibration: float
@@ -38,26 +56,27 @@ class Causes:
 
 
 def causes_with_air(work: SceneWork, ground: AirAndGround, radiance: Pixels) -> Causes:
-    """Causes of the single-channel method at one pixel.
+    """Causes of the single-channel method at the pixels of a small block.
 
     Parameters
     ----------
     work : SceneWork
     ground : AirAndGround
-        Of a block of one pixel.
-    radiance : float32 array (1, 1)
+        Of the block.
+    radiance : float32 array (rows, columns), C-contiguous
         [W m-2 sr-1 um-1]
     """
     settings = work.settings
     size = settings.weighting.size + 3
-    air = ground.air(_ONE, _ONE)
-    fields = ground.emissivity.window(_ONE, _ONE)
+    rows, columns = _whole(radiance)
+    air = ground.air(rows, columns)
+    fields = ground.emissivity.window(rows, columns)
 
     def alone(cause: int | None, calibration: float) -> chain.Inversion:
         parts = [air[:size]] if cause is None else [air[:size], air[(cause + 1) * size : (cause + 2) * size]]
         return chain.invert(
             radiance,
-            np.zeros((1, 1), np.uint16),
+            np.zeros(radiance.shape, np.uint16),
             fields.band,
             fields.band_uncertainty,
             air=np.ascontiguousarray(np.concatenate(parts)),
@@ -66,49 +85,55 @@ def causes_with_air(work: SceneWork, ground: AirAndGround, radiance: Pixels) -> 
 
     sensor = alone(None, settings.calibration)
     return Causes(
-        noise=float(sensor.pixel[0, 0]),
-        calibration=float(sensor.scene[0, 0]),
-        emissivity=float(sensor.surface_class[0, 0]),
-        air={name: float(alone(index, 0.0).scene[0, 0]) for index, name in enumerate(ground.stack.causes)},
+        noise=sensor.pixel,
+        calibration=sensor.scene,
+        emissivity=sensor.surface_class,
+        air={name: alone(index, 0.0).scene for index, name in enumerate(ground.stack.causes)},
     )
 
 
 def causes_with_column(
     work: SceneWork, ground: ColumnAndGround, radiance: Pixels, brightness: Pixels
 ) -> Causes:
-    """Causes of the water-vapour method at one pixel.
+    """Causes of the water-vapour method at the pixels of a small block.
 
     Parameters
     ----------
     work : SceneWork
     ground : ColumnAndGround
-        Of a block of one pixel.
-    radiance, brightness : float32 arrays (1, 1)
+        Of the block.
+    radiance, brightness : float32 arrays (rows, columns), C-contiguous
         [W m-2 sr-1 um-1], [K]
     """
+    rows, columns = _whole(radiance)
 
     def alone(calibration: float, water: float) -> chain.Inversion:
         return invert_with_column(
             radiance,
             brightness,
-            np.zeros((1, 1), np.uint16),
-            ground.emissivity.window(_ONE, _ONE),
-            ground.water_of(_ONE, _ONE),
+            np.zeros(radiance.shape, np.uint16),
+            ground.emissivity.window(rows, columns),
+            ground.water_of(rows, columns),
             settings=replace(work.settings, calibration=calibration),
             method=replace(ground.method, relative_uncertainty=water),
         )
 
-    def beyond_method(found: chain.Inversion) -> float:
-        return float(np.sqrt(np.maximum(np.float64(found.scene[0, 0]) ** 2 - METHOD_UNCERTAINTY**2, 0.0)))
+    def beyond_method(found: chain.Inversion) -> Pixels:
+        squares = found.scene.astype(np.float64) ** 2 - METHOD_UNCERTAINTY**2
+        return np.sqrt(np.maximum(squares, 0.0)).astype(np.float32)
 
     sensor = alone(work.settings.calibration, 0.0)
-    valid = np.isfinite(sensor.temperature[0, 0])
+    method = np.where(np.isfinite(sensor.temperature), np.float32(METHOD_UNCERTAINTY), np.float32(np.nan))
     return Causes(
-        noise=float(sensor.pixel[0, 0]),
+        noise=sensor.pixel,
         calibration=beyond_method(sensor),
-        emissivity=float(sensor.surface_class[0, 0]),
+        emissivity=sensor.surface_class,
         air={
             "column_water_vapour": beyond_method(alone(0.0, ground.method.relative_uncertainty)),
-            "method": METHOD_UNCERTAINTY if valid else float("nan"),
+            "method": method,
         },
     )
+
+
+def _whole(pixels: Pixels) -> tuple[slice, slice]:
+    return slice(0, pixels.shape[0]), slice(0, pixels.shape[1])

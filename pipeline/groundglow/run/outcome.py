@@ -45,6 +45,8 @@ class SceneOutcome:
         [W m-2]
     reference : mapping
         By layer name, errors against known values.
+    uncertainty : mapping of str to float
+        By cause: root mean square of its 1-sigma effect on surface temperature over a sample. [K]
     seconds : float
     notes : tuple of str
         What was assumed.
@@ -65,6 +67,7 @@ class SceneOutcome:
     temperature: Mapping[str, float | None] = field(default_factory=dict)
     mean_emitted_flux: float | None = None
     reference: Mapping[str, KnownError] = field(default_factory=dict)
+    uncertainty: Mapping[str, float] = field(default_factory=dict)
     seconds: float = 0.0
     notes: tuple[str, ...] = ()
     address: str = ""

@@ -5,7 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable
 from contextlib import ExitStack
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any, NamedTuple
 
@@ -14,6 +14,7 @@ from groundglow.layers.geotiff import LayerSummary, LayerWriter
 from groundglow.layers.tags import text_of
 from groundglow.raster.environment import gdal_environment
 from groundglow.raster.grid import Block
+from groundglow.run.budget import uncertainty_budget
 from groundglow.run.companions import write_companions
 from groundglow.run.fingerprint import SceneFingerprint
 from groundglow.run.outcome import SceneOutcome, outcome_of
@@ -76,6 +77,7 @@ def build_scene(
         plan.name, plan.work.grid, summaries, errors,
         folder=place, seconds=time.perf_counter() - began, notes=plan.scene.notes,
     )  # fmt: skip
+    outcome = replace(outcome, uncertainty=uncertainty_budget(plan))
     write_companions(plan, folder, summaries, outcome, fingerprint, durable=durable)
     return outcome
 
