@@ -369,7 +369,8 @@ class TestFluxAndContributions:
         np.testing.assert_allclose(product, band.transmittance, rtol=2e-3)
         assert found.column_water_vapour == pytest.approx(SUMMER.column_water_vapour, rel=0.01)
         grid = with_causes("midlatitude_summer", 0.10, 1.0)["10"]
-        assert found.sky_flux == pytest.approx(grid.terms.sky_flux[0, 0, 0])
+        # The grid's flux is solved at every second wavenumber.
+        assert found.sky_flux == pytest.approx(grid.terms.sky_flux[0, 0, 0], abs=0.03)
 
     def test_spectra_add_up_to_the_grid(self) -> None:
         found = air_of_profile(SUMMER, TWO_BANDS, NO_FLUX, ground=0.0).bands["10"]

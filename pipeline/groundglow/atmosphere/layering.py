@@ -6,6 +6,8 @@ begin at 20 m and grow by 15 % from one to the next; all levels of the profile a
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -43,8 +45,15 @@ def solution_levels(
     Returns
     -------
     array
-        Increasing, from the ground to the top of the profile. [m]
+        Increasing, from the ground to the top of the profile; not to be written to. [m]
     """
+    return _solution_levels(levels.tobytes(), ground, sensor, refinement)
+
+
+# Neighbouring places and perturbed profiles share their levels.
+@lru_cache(maxsize=1024)
+def _solution_levels(packed: bytes, ground: float, sensor: float | None, refinement: int) -> Float:
+    levels = np.frombuffer(packed, dtype=np.float64)
     top = float(levels[-1])
     wanted = ground + steps_upward(top - ground)
     steps = np.append(np.diff(wanted), top - wanted[-1])
@@ -64,6 +73,7 @@ def solution_levels(
         inside = np.arange(refinement) / refinement
         finer = heights[:-1, np.newaxis] + np.diff(heights)[:, np.newaxis] * inside
         heights = np.append(finer.ravel(), heights[-1])
+    heights.flags.writeable = False
     return heights
 
 

@@ -63,6 +63,11 @@ class FluxPlan:
         return FluxPlan(spectrum(np.arange(wavenumbers().size), absorption), np.arange(heights))
 
     @staticmethod
+    def scene(absorption: str, heights: int) -> FluxPlan:
+        """Every second wavenumber, which costs 0.01 W m-2, and every height."""
+        return FluxPlan(spectrum(np.arange(0, wavenumbers().size, 2), absorption), np.arange(heights))
+
+    @staticmethod
     def coarse(absorption: str, heights: int) -> FluxPlan:
         """Enough for differences."""
         index = np.linspace(0, heights - 1, min(heights, _FLUX_CHANGE_HEIGHTS)).round().astype(np.int64)

@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from groundglow.atmosphere.absorption import DEFAULT_SET
 from groundglow.atmosphere.causes import causes_of_uncertainty
 from groundglow.atmosphere.composition import Composition, composed
+from groundglow.atmosphere.condensation import condensed
 from groundglow.atmosphere.grid import AtmosphereGrid
 from groundglow.atmosphere.node_solver import Bands, FluxPlan, NodeSolver, Solved
 from groundglow.atmosphere.nodes import height_nodes, secant_nodes
@@ -132,14 +133,14 @@ def solve_atmosphere(
     """
     x, y, ordered = _placed(profiles)
     bands = Bands.of(responses, settings.absorption)
-    airs = [composed(profile, settings.composition) for profile in ordered]
+    airs = [condensed(composed(profile, settings.composition)) for profile in ordered]
     moistest = airs[int(np.argmax([air.column_water_vapour for air in airs]))]
     temperatures = _surface_temperatures(airs, view.ground_height[0])
     low, steepest = view.ground_height[0], 1.0 / np.cos(np.radians(view.zenith_angle[1]))
     bands = bands.weighted_for(moistest, low, float(steepest), view.sensor.above_sea(low), temperatures)
     height, secant = _nodes(moistest, bands, view, temperatures)
     solver = NodeSolver(bands, height, secant, view.sensor, temperatures, (y.size, x.size))
-    flux = FluxPlan.full(settings.absorption, height.size) if settings.sky_flux else None
+    flux = FluxPlan.scene(settings.absorption, height.size) if settings.sky_flux else None
     base = solver.solve(airs, flux)
     causes = {}
     if settings.uncertainty is not None:
