@@ -18,6 +18,7 @@ from command_line import groundglow
 from groundglow.documents import checked
 from groundglow.quantities import FLAGS
 from groundglow.run.config import Job
+from groundglow.scene.scene_document import SceneDocument
 from groundglow.scene.sensor_document import SensorDocument
 from invented_scene import paint_scene
 
@@ -147,3 +148,10 @@ def test_help_says_what_is_read_what_is_written_and_how_it_ends(command: str) ->
     text = " ".join(found.out.split())
     assert "Exit codes: 0" in text
     assert re.search(r"Reads|Writes|writes|written", text)
+
+
+def test_the_readmes_job_and_scene_are_what_the_models_take() -> None:
+    blocks = re.findall(r"```toml\n(.*?)```", (ROOT / "README.md").read_text(), flags=re.DOTALL)
+    job, scene = (tomllib.loads(block) for block in blocks)
+    assert checked(Job, job, where="README.md").emissivity.source == "land-cover"
+    assert checked(SceneDocument, scene, where="README.md").scene.name == "harbour-2026-07-14"
