@@ -35,7 +35,9 @@ JobFile = Annotated[
 ]
 Output = Annotated[
     str | None,
-    typer.Option(metavar="FOLDER", help="Write to this folder (or s3:// address) instead of the job's output."),
+    typer.Option(
+        metavar="FOLDER", help="Write to this folder (or s3:// address) instead of the job's output."
+    ),
 ]
 Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="No progress and no table; errors still show.")]
 Json = Annotated[bool, typer.Option("--json", help="Print the summary as JSON on standard output.")]
@@ -160,7 +162,9 @@ def sensors(
     name: Annotated[
         str | None, typer.Argument(metavar="SENSOR", help="A shipped sensor, or the path of a sensor file.")
     ] = None,
-    plot: Annotated[Path | None, typer.Option(metavar="FILE", help="Draw the responses (.png, .svg).")] = None,
+    plot: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Draw the responses (.png, .svg).")
+    ] = None,
     as_json: Json = False,
 ) -> None:
     """List the sensors there are, or show one in numbers.
