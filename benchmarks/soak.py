@@ -107,7 +107,11 @@ def write_large(path: Path, pixels: NDArray[np.uint16], edge: int) -> None:
     """The same square again and again, written piece by piece; other numbers in each piece."""
     size = pixels.shape[0]
     with rasterio.open(path) as small:
-        profile = small.profile | {"width": edge, "height": edge, "tiled": True, "bigtiff": "if_safer"}
+        profile = (
+            small.profile
+            | {"width": edge, "height": edge, "tiled": True}
+            | {"blockxsize": 512, "blockysize": 512, "bigtiff": "if_safer"}
+        )
     with rasterio.open(path, "w", **profile) as large:
         for row in range(0, edge, size):
             for column in range(0, edge, size):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import json
 import os
 from collections.abc import Sequence
 from pathlib import Path
@@ -30,10 +31,11 @@ def paint_night(folder: Path, names: Sequence[str] = NAMES, *, height: int = 90,
     return write_job(folder)
 
 
-def write_job(folder: Path, more: str = "", *, scenes: str = "scenes/*/scene.toml", head: str = "") -> Path:
+def write_job(folder: Path, more: str = "", *, scenes: str | tuple[str, ...] = "scenes/*/scene.toml", head: str = "") -> Path:
     """The job over all scenes, which tries failing ones again without waiting."""
     job = folder / "job.toml"
-    text = f'scenes = "{scenes}"\noutput = "maps"\n{head}\n{GROUND}\n{AIR}\n{more}\n'
+    named = json.dumps(scenes)
+    text = f'scenes = {named}\noutput = "maps"\n{head}\n{GROUND}\n{AIR}\n{more}\n'
     job.write_text(text if "[retry]" in text else f"{text}[retry]\ndelay = 0.01\n", encoding="utf-8")
     return job
 

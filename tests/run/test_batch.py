@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import errno
+import io
 import json
 import os
 import shutil
 import subprocess
+import tarfile
 from pathlib import Path
 from typing import Any
 
@@ -412,3 +415,37 @@ class TestFolder:
         report = run(job.parent, code=SOME)
         assert [scene["status"] for scene in report["scenes"]] == ["done", "failed"]
         assert "too long" in report["scenes"][1]["reason"]
+
+    def test_a_disk_that_fills_in_mid_scene(self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+        job = paint_night(tmp_path)
+        sound, full = Path.replace, OSError(errno.ENOSPC, os.strerror(errno.ENOSPC))
+
+        def replace(path: Path, target: Path) -> Path:
+            if "second" in str(target) and Path(target).name == "emitted_flux.tif":
+                raise full
+            return sound(path, target)
+
+        monkeypatch.setattr(Path, "replace", replace)
+        report = run(job.parent, code=SOME)
+        assert statuses(report) == {"first": "done", "second": "failed", "third": "done"}
+        assert "No space left" in report["scenes"][1]["reason"]
+        assert report["scenes"][1]["attempts"] == 1
+        assert leftovers(tmp_path / "maps") == []
+        monkeypatch.undo()
+        assert statuses(run(job.parent)) == {"first": "up to date", "second": "done", "third": "up to date"}
+
+    def test_spoiled_archives_are_refused_alone(self, tmp_path: Path) -> None:
+        job = paint_night(tmp_path)
+        (tmp_path / "scenes" / "cut.tar").write_bytes(b"not an archive" * 100)
+        member = tarfile.TarInfo("../escaped_MTL.txt")
+        with tarfile.open(tmp_path / "scenes" / "escaping.tar", "w") as tape:
+            tape.addfile(member, io.BytesIO())
+        write_job(tmp_path, scenes=("scenes/*.tar", "scenes/*/scene.toml"))
+        report = run(job.parent, code=SOME)
+        found = {
+            Path(scene["address"]).name: (scene["status"], scene["reason"]) for scene in report["scenes"]
+        }
+        assert [status for status, _ in found.values()].count("failed") == 2
+        assert found["cut.tar"][0] == "failed"
+        assert "leads out of it" in found["escaping.tar"][1]
+        assert not (tmp_path / "escaped_MTL.txt").exists()

@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-import functools
-import http.server
 import io
 import json
-import threading
+import shutil
+import subprocess
+import sys
 import tracemalloc
 from collections.abc import Iterator
 from datetime import UTC, datetime
@@ -24,7 +24,8 @@ from groundglow.run.batch_lists import linked_address, wanted_scenes
 from groundglow.run.batch_select import left_out, overlap
 from groundglow.run.config import Job
 from groundglow.run.config_batch import Select
-from night import paint_night, write_job
+from invented_scene import paint_scene
+from night import layer_digests, paint_night, settle, write_job
 
 MINIMAL = {
     "output": "maps",
@@ -78,19 +79,41 @@ def catalogue(tmp_path: Path) -> Path:
     return tmp_path
 
 
+# A server in a process of its own (GDAL may wait for it while it holds this process), which gives parts of files.
+SERVER = """
+import functools, http.server, pathlib, re, sys
+
+class Handler(http.server.SimpleHTTPRequestHandler):
+    def do_GET(self):
+        path, wanted = pathlib.Path(self.translate_path(self.path)), self.headers.get("Range")
+        if wanted is None or not path.is_file():
+            return super().do_GET()
+        data = path.read_bytes()
+        first, last = (int(part) for part in re.fullmatch(r"bytes=([0-9]+)-([0-9]+)", wanted).groups())
+        part = data[first : last + 1]
+        self.send_response(206 if part else 416)
+        self.send_header("Content-Range", f"bytes {first}-{first + len(part) - 1}/{len(data)}")
+        self.send_header("Content-Length", str(len(part)))
+        self.end_headers()
+        self.wfile.write(part)
+
+    def log_message(self, *arguments):
+        pass
+
+handler = functools.partial(Handler, directory=sys.argv[1])
+with http.server.ThreadingHTTPServer(("127.0.0.1", 0), handler) as served:
+    print(served.server_port, flush=True)
+    served.serve_forever()
+"""
+
+
 @pytest.fixture
 def server(catalogue: Path) -> Iterator[str]:
-    class Handler(http.server.SimpleHTTPRequestHandler):
-        def log_message(self, format: str, *args: object) -> None:
-            """Say nothing."""
-
-    handler = functools.partial(Handler, directory=str(catalogue))
-    with http.server.ThreadingHTTPServer(("127.0.0.1", 0), handler) as served:
-        thread = threading.Thread(target=served.serve_forever)
-        thread.start()
-        yield f"http://127.0.0.1:{served.server_port}"
-        served.shutdown()
-        thread.join()
+    command = [sys.executable, "-c", SERVER, str(catalogue)]
+    with subprocess.Popen(command, stdout=subprocess.PIPE, text=True) as process:
+        assert process.stdout is not None
+        yield f"http://127.0.0.1:{int(process.stdout.readline())}"
+        process.kill()
 
 
 class TestLists:
@@ -262,3 +285,78 @@ class TestSelect:
         assert not overlap((0, 0, 1, 1), (1, 0, 2, 1))
         assert overlap((170, 0, -170, 1), (-175, 0, -172, 1))
         assert not overlap((170, 0, -170, 1), (-169, 0, 169, 1))
+
+
+BRIGHTNESS = """
+scenes = "{scenes}"
+output = "{output}"
+[emissivity]
+source = "constant"
+value = 0.97
+[atmosphere]
+source = "none"
+[layers]
+write = ["brightness_temperature"]
+[retry]
+delay = 0.01
+"""
+
+
+class TestLandsatItems:
+    """Lists of Items from the list to the maps."""
+
+    @pytest.fixture
+    def landsat(self, catalogue: Path) -> Path:
+        """The catalogue's Items with a thermal band each."""
+        painted = paint_scene(catalogue / "painted", 60, 70)
+        for path in (*catalogue.glob("july/[ot]*.json"), catalogue / "alone" / "alone.json"):
+            document = json.loads(path.read_text())
+            document["properties"] |= {"platform": "landsat-9", "instruments": ["tirs"]}
+            band = {"unit": "W m-2 sr-1 um-1", "nodata": 0, "data_type": "uint16", "raster:scale": 3e-4,
+                    "raster:offset": 0.1, "eo:common_name": "lwir11"}  # fmt: skip
+            document["assets"] = {"lwir11": {"href": f"{path.stem}.tif", "roles": ["data"], "bands": [band]}}
+            write(path, document)
+            shutil.copy(painted.folder / "thermal.tif", path.with_suffix(".tif"))
+        settle(catalogue)
+        return catalogue
+
+    def run(self, folder: Path, scenes: str, output: Path) -> dict[str, str]:
+        job = folder / "job.toml"
+        job.write_text(BRIGHTNESS.format(scenes=scenes, output=output))
+        finished = groundglow("run", job, "--json", "--quiet")
+        assert finished.code == 0, finished.err
+        return {scene["name"]: scene["status"] for scene in json.loads(finished.out)["scenes"]}
+
+    def test_the_same_maps_from_every_kind_of_list(self, landsat: Path, server: str, tmp_path: Path) -> None:
+        done = dict.fromkeys(("alone", "one", "two"), "done")
+        items = [json.loads((landsat / path).read_text()) for path in ("alone/alone.json", "july/one.json")]
+        items.append(json.loads((landsat / "july" / "two.json").read_text()))
+        for one, folder in zip(items, ("alone", "july", "july"), strict=True):
+            one["assets"]["lwir11"]["href"] = f"{folder}/{one['id']}.tif"
+        write(landsat / "found.json", {"type": "FeatureCollection", "features": items})
+        kinds = {
+            "items": "*/*one.json",
+            "catalogue": "collection.json",
+            "collection": "found.json",
+            "network": f"{server}/collection.json",
+        }
+        digests = {}
+        for kind, scenes in kinds.items():
+            found = self.run(landsat, scenes, tmp_path / kind)
+            assert found == {
+                name: status for name, status in done.items() if kind != "items" or name != "two"
+            }
+            digests[kind] = layer_digests(tmp_path / kind)
+            assert set(self.run(landsat, scenes, tmp_path / kind).values()) == {"up to date"}
+        assert digests["catalogue"] == digests["collection"] == digests["network"]
+        assert digests["items"].items() < digests["catalogue"].items()
+
+    def test_an_item_that_changes_within_its_list_is_made_again(self, landsat: Path, tmp_path: Path) -> None:
+        items = [json.loads((landsat / path).read_text()) for path in ("alone/alone.json", "july/one.json")]
+        for one, folder in zip(items, ("alone", "july"), strict=True):
+            one["assets"]["lwir11"]["href"] = f"{folder}/{one['id']}.tif"
+        write(landsat / "found.json", {"type": "FeatureCollection", "features": items})
+        self.run(landsat, "found.json", tmp_path / "maps")
+        items[1]["assets"]["lwir11"]["bands"][0]["raster:offset"] = 0.2
+        write(landsat / "found.json", {"type": "FeatureCollection", "features": items})
+        assert self.run(landsat, "found.json", tmp_path / "maps") == {"alone": "up to date", "one": "done"}
