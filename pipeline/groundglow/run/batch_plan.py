@@ -19,9 +19,9 @@ from groundglow.run.publish_place import Place
 from groundglow.scene.open import open_scene
 from groundglow.scene.stac import read_item
 
-# Measured on two cores of a 2.5 GHz server, five layers, single-channel with typed-in air; a run's report
-# replaces it from then on.
-DEFAULT_SECONDS_PER_MEGAPIXEL = 0.35
+# Measured with four layers, typed-in air and a preview (docs/scaling.md); a run's report replaces both from then on.
+DEFAULT_SECONDS_PER_MEGAPIXEL = 0.4
+DEFAULT_SECONDS_PER_SCENE = 0.2
 
 
 @dataclass(frozen=True)
@@ -135,7 +135,8 @@ def _estimate(scenes: list[dict[str, Any]], settings: PlanSettings) -> dict[str,
     unknown = sum(one["state"] == "not looked at" for one in scenes)
     factor = (len(due) + unknown) / len(due) if due else 0.0
     constant = settings.measured or DEFAULT_SECONDS_PER_MEGAPIXEL
-    seconds = factor * sum(one["pixels"] for one in due) / 1e6 * constant / settings.workers
+    fixed = 0.0 if settings.measured else DEFAULT_SECONDS_PER_SCENE
+    seconds = factor * sum(one["pixels"] / 1e6 * constant + fixed for one in due) / settings.workers
     return {
         "seconds": round(seconds, 1),
         "peak_memory_mib": max((one["peak_memory_mib"] for one in due), default=0),
