@@ -20,7 +20,7 @@ from groundglow.scene.open import open_scene
 from groundglow.scene.stac import read_item
 
 # Measured with four layers, typed-in air and a preview (docs/scaling.md); a run's report replaces both from then on.
-DEFAULT_SECONDS_PER_MEGAPIXEL = 0.4
+DEFAULT_SECONDS_PER_MEGAPIXEL = 0.2
 DEFAULT_SECONDS_PER_SCENE = 0.2
 
 
