@@ -31,7 +31,9 @@ def paint_night(folder: Path, names: Sequence[str] = NAMES, *, height: int = 90,
     return write_job(folder)
 
 
-def write_job(folder: Path, more: str = "", *, scenes: str | tuple[str, ...] = "scenes/*/scene.toml", head: str = "") -> Path:
+def write_job(
+    folder: Path, more: str = "", *, scenes: str | tuple[str, ...] = "scenes/*/scene.toml", head: str = ""
+) -> Path:
     """The job over all scenes, which tries failing ones again without waiting."""
     job = folder / "job.toml"
     named = json.dumps(scenes)
