@@ -21,9 +21,9 @@ import time
 from collections.abc import Callable
 from pathlib import Path
 
-from groundglow.run.batch_memory import Memory, Seen
-from groundglow.run.batch_state import job_digest, stamps
-from groundglow.run.config import read_job
+from groundglow.run.batch.memory import Memory, Seen
+from groundglow.run.config.job import read_job
+from groundglow.run.placing.state import job_digest, stamps
 
 ROOT = Path(__file__).parents[1]
 # Long ago enough that a file's time is proof of its content.

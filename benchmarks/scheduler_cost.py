@@ -14,7 +14,7 @@ import argparse
 import time
 from concurrent.futures import ThreadPoolExecutor
 
-from groundglow.run.scheduler_cluster import Cluster
+from groundglow.run.making.scheduler_cluster import Cluster
 
 _BOUND = 0.05
 

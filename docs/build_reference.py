@@ -16,9 +16,9 @@ from pydantic_core import PydanticUndefined
 
 from groundglow.documents import Document
 from groundglow.quantities import DEFAULT_MASK, FLAGS, QUANTITIES
-from groundglow.run.config import DEFAULT_LAYERS, LAYER_NAMES, NEEDS_SKY_FLUX, Job
-from groundglow.run.job_schema import job_schema, one_or_many
-from groundglow.run.measures import _CONVERSIONS, Unit
+from groundglow.run.config.job import DEFAULT_LAYERS, LAYER_NAMES, NEEDS_SKY_FLUX, Job
+from groundglow.run.config.measures import _CONVERSIONS, Unit
+from groundglow.run.config.schema import job_schema, one_or_many
 from groundglow.scene.sensor import load_sensor, sensor_names
 
 HERE = Path(__file__).resolve().parent

@@ -17,7 +17,7 @@ import rasterio
 from command_line import groundglow
 from groundglow.documents import checked
 from groundglow.quantities import FLAGS
-from groundglow.run.config import Job
+from groundglow.run.config.job import Job
 from groundglow.scene.scene_document import SceneDocument
 from groundglow.scene.sensor_document import SensorDocument
 from invented_scene import paint_scene

@@ -19,9 +19,9 @@ import xarray as xr
 
 from groundglow.errors import ConfigError
 from groundglow.quantities import FLAGS
-from groundglow.run.config import Job, read_job
-from groundglow.run.plan import ScenePlan, plan_scene
-from groundglow.run.scene_dataset import open_scene_dataset, write_layers
+from groundglow.run.config.job import Job, read_job
+from groundglow.run.planning.plan import ScenePlan, plan_scene
+from groundglow.run.stage.scene_dataset import open_scene_dataset, write_layers
 from groundglow.scene.open import open_scene
 from groundglow.stages.atmosphere import atmosphere
 from groundglow.stages.brightness_temperature import brightness_temperature

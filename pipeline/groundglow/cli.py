@@ -80,7 +80,7 @@ def run(
     are up to date are skipped, and one that fails does not stop the others. The report and the log of a run
     are in the folder .groundglow of the output folder.
     """
-    from groundglow.run.commands import run_job  # noqa: PLC0415  (help must not wait for the libraries)
+    from groundglow.run.batch.commands import run_job  # noqa: PLC0415  (help must not wait for the libraries)
 
     code = run_job(
         job,
@@ -107,7 +107,7 @@ def plan(
 
     Reads descriptions and headers only, and writes nothing.
     """
-    from groundglow.run.commands import plan_job  # noqa: PLC0415  (help must not wait for the libraries)
+    from groundglow.run.batch.commands import plan_job  # noqa: PLC0415  (help must not wait for the libraries)
 
     raise typer.Exit(plan_job(job, output=output, as_json=as_json, detailed=detailed))
 
@@ -137,7 +137,7 @@ def air(
     Water, transmittance and radiances of each band, what each gas takes, the sky flux beside two published
     formulas, and what the stated uncertainties change. No layer is made.
     """
-    from groundglow.run.air_command import show_air  # noqa: PLC0415  (help must not wait for the libraries)
+    from groundglow.run.inspection.air_command import show_air  # noqa: PLC0415  (help must not wait for the libraries)
 
     show_air(job, band=band, height=height, angle=angle, as_json=as_json, plot=plot, spectrum=spectrum)
 
@@ -152,7 +152,7 @@ def catalogue(
 
     Every run keeps the collection up to date; this is for folders that were moved in, out or deleted.
     """
-    from groundglow.run.commands import rebuild_catalogue  # noqa: PLC0415  (help must not wait for the libraries)
+    from groundglow.run.batch.commands import rebuild_catalogue  # noqa: PLC0415  (help must not wait for the libraries)
 
     raise typer.Exit(rebuild_catalogue(output))
 
@@ -172,7 +172,7 @@ def sensors(
     Effective wavelength, the two constants fitted to the spectral response and their error, and how the published
     constants differ from the integrated response.
     """
-    from groundglow.run.sensor_command import list_sensors, show_sensor  # noqa: PLC0415  (see above)
+    from groundglow.run.inspection.sensor_command import list_sensors, show_sensor  # noqa: PLC0415  (see above)
 
     if name is None:
         list_sensors(as_json=as_json)

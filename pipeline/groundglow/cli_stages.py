@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 if TYPE_CHECKING:
-    from groundglow.run.stage_setting import StageCall
+    from groundglow.run.stage.setting import StageCall
 
 EXIT_CODES = """\
 Exit codes: 0 done; 2 the command, job or scene file cannot be followed as written; 3 an input is missing or not what
@@ -60,7 +60,7 @@ def register(app: typer.Typer) -> None:
 
 
 def _call(job: Path, scene: str, output: Path, workers: int | None) -> StageCall:
-    from groundglow.run.stage_setting import StageCall  # noqa: PLC0415  (help must not wait for the libraries)
+    from groundglow.run.stage.setting import StageCall  # noqa: PLC0415  (help must not wait for the libraries)
 
     return StageCall(job, scene, output, workers)
 
@@ -78,7 +78,7 @@ def radiance(
     Reads JOB and SCENE with its thermal and quality rasters. Writes radiance.tif, quality.tif and, last,
     stage.json. Neither the air nor the emissivity is looked at.
     """
-    from groundglow.run import stage_commands as stages  # noqa: PLC0415  (help must not wait for the libraries)
+    from groundglow.run.stage import commands as stages  # noqa: PLC0415  (help must not wait for the libraries)
 
     raise typer.Exit(stages.radiance(_call(job, scene, output, workers), quiet=quiet, as_json=as_json))
 
@@ -97,7 +97,7 @@ def brightness_temperature(
     Reads JOB, SCENE and the radiance. Writes brightness_temperature.tif, quality.tif (with the flags that
     the sensor's calibrated range and saturation set) and stage.json.
     """
-    from groundglow.run import stage_commands as stages  # noqa: PLC0415  (as above)
+    from groundglow.run.stage import commands as stages  # noqa: PLC0415  (as above)
 
     call = _call(job, scene, output, workers)
     raise typer.Exit(stages.brightness_temperature(call, given, quiet=quiet, as_json=as_json))
@@ -117,7 +117,7 @@ def emissivity(
     emissivity_uncertainty.tif, broadband_emissivity.tif, the two parts of its uncertainty, quality.tif and
     stage.json.
     """
-    from groundglow.run import stage_commands as stages  # noqa: PLC0415  (as above)
+    from groundglow.run.stage import commands as stages  # noqa: PLC0415  (as above)
 
     raise typer.Exit(stages.emissivity(_call(job, scene, output, workers), quiet=quiet, as_json=as_json))
 
@@ -135,7 +135,7 @@ def atmosphere(
     at nodes of place, ground height and view zenith angle, and their change for each cause of error) and
     stage.json.
     """
-    from groundglow.run import stage_commands as stages  # noqa: PLC0415  (as above)
+    from groundglow.run.stage import commands as stages  # noqa: PLC0415  (as above)
 
     raise typer.Exit(stages.atmosphere(_call(job, scene, output, None), quiet=quiet, as_json=as_json))
 
@@ -159,7 +159,7 @@ def surface_temperature(
     instead. Writes surface_temperature.tif, its uncertainty and the parts of it,
     transmittance.tif, path_radiance.tif, sky_flux.tif (where known), quality.tif and stage.json.
     """
-    from groundglow.run import stage_commands as stages  # noqa: PLC0415  (as above)
+    from groundglow.run.stage import commands as stages  # noqa: PLC0415  (as above)
 
     given = (radiance, brightness, emissivity, atmosphere)
     call = _call(job, scene, output, workers)
@@ -181,7 +181,7 @@ def flux(
     Reads JOB, SCENE, the surface temperature and the emissivity. Writes emitted_flux.tif,
     emitted_flux_uncertainty.tif, leaving_flux.tif, net_longwave_flux.tif, quality.tif and stage.json.
     """
-    from groundglow.run import stage_commands as stages  # noqa: PLC0415  (as above)
+    from groundglow.run.stage import commands as stages  # noqa: PLC0415  (as above)
 
     call = _call(job, scene, output, workers)
     raise typer.Exit(stages.flux(call, temperature, emissivity, quiet=quiet, as_json=as_json))
@@ -201,7 +201,7 @@ def layers(
     Reads JOB, SCENE and the folders given; together they must hold what the job's layers.write names. Flags of
     all folders are joined. Writes the folder that 'groundglow run' would have written for this scene.
     """
-    from groundglow.run import stage_commands as stages  # noqa: PLC0415  (as above)
+    from groundglow.run.stage import commands as stages  # noqa: PLC0415  (as above)
 
     raise typer.Exit(stages.layers(_call(job, scene, output, workers), inputs, quiet=quiet, as_json=as_json))
 
@@ -229,14 +229,14 @@ def explain(
     Counts, radiance, brightness temperature, emissivity and where it is from, the air, surface temperature,
     fluxes, flags by name, and the 1-sigma uncertainty by cause. Nothing is written.
     """
-    from groundglow.run.explain_command import explain_job  # noqa: PLC0415  (as above)
+    from groundglow.run.inspection.explain_command import explain_job  # noqa: PLC0415  (as above)
 
     raise typer.Exit(explain_job(job, x, y, lonlat=lonlat, points=points, scene=scene, as_json=as_json))
 
 
 def job_schema() -> None:
     """Print the JSON Schema of the job file, for editors that check and complete TOML."""
-    from groundglow.run.job_schema import job_schema as schema  # noqa: PLC0415  (as above)
+    from groundglow.run.config.schema import job_schema as schema  # noqa: PLC0415  (as above)
 
     typer.echo(schema(), nl=False)
 

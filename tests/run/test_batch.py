@@ -18,7 +18,8 @@ from rasterio.errors import RasterioIOError
 
 from command_line import groundglow
 from groundglow.errors import InputError
-from groundglow.run import batch_scene, publish
+from groundglow.run.batch import scene as batch_scene
+from groundglow.run.placing import publish
 from invented_scene import InventedScene, scene_text, write_raster
 from night import NAMES, layer_digests, leftovers, paint_night, settle, write_job
 

@@ -12,8 +12,8 @@ import pytest
 from pystac.validation.stac_validator import JsonSchemaSTACValidator
 
 from command_line import groundglow
-from groundglow.run.catalogue import Catalogue, union
-from groundglow.run.publish_place import LocalPlace
+from groundglow.run.placing.catalogue import Catalogue, union
+from groundglow.run.placing.place import LocalPlace
 from night import NAMES, paint_night
 
 SCHEMAS = Path(__file__).parent.parent / "references" / "stac_schemas"

@@ -17,10 +17,11 @@ import pytest
 from distributed import Client
 
 from command_line import groundglow
-from groundglow.run import batch_cluster, scheduler_cluster
-from groundglow.run.batch_cluster import ClusterRunner
-from groundglow.run.retry import LostWorkerError
-from groundglow.run.scheduler_cluster import Cluster
+from groundglow.run.access.retry import LostWorkerError
+from groundglow.run.batch import cluster as batch_cluster
+from groundglow.run.batch.cluster import ClusterRunner
+from groundglow.run.making import scheduler_cluster
+from groundglow.run.making.scheduler_cluster import Cluster
 from night import layer_digests, leftovers, paint_night, write_job
 
 NAMES = tuple(f"scene-{number}" for number in range(6))

@@ -13,7 +13,7 @@ from rasterio.warp import transform as reproject
 
 from command_line import Finished, groundglow
 from groundglow import api
-from groundglow.run.explain import explain_pixel
+from groundglow.run.inspection.explain import explain_pixel
 from invented_scene import InventedScene, paint_scene
 from stage_scenes import varied_scene
 

@@ -268,7 +268,7 @@ def test_the_run_loads_nothing_heavy(tmp_path: Path) -> None:
         "pyproj",
     }
     assert not heavy & loaded
-    assert "groundglow.run.worker" in loaded
+    assert "groundglow.run.blocks.worker" in loaded
 
 
 def test_help_starts_without_the_numerical_libraries() -> None:

@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 
 from command_line import Finished, groundglow
-from groundglow.run import publish
+from groundglow.run.placing import publish
 from invented_scene import AIR, InventedScene, paint_scene, scene_text, write_raster
 
 USAGE, FAILED, BUSY = 2, 3, 75
@@ -184,7 +184,7 @@ def test_output_that_cannot_be_written(scene: InventedScene) -> None:
 def test_a_disk_too_small_is_refused_before_the_start(
     scene: InventedScene, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    monkeypatch.setattr("groundglow.run.scene_run.free_bytes", lambda output: 1000)
+    monkeypatch.setattr("groundglow.run.making.scene_run.free_bytes", lambda output: 1000)
     refused(groundglow("run", scene.job_file), FAILED, "disk", "MiB", "Free some space")
     nothing_left(scene)
 

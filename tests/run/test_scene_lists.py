@@ -18,12 +18,12 @@ import pytest
 from command_line import groundglow
 from groundglow.documents import checked
 from groundglow.errors import ConfigError, InputError
-from groundglow.run.batch_entry import SceneEntry
-from groundglow.run.batch_json import top_members
-from groundglow.run.batch_lists import linked_address, wanted_scenes
-from groundglow.run.batch_select import left_out, overlap
-from groundglow.run.config import Job
-from groundglow.run.config_batch import Select
+from groundglow.run.batch.entry import SceneEntry
+from groundglow.run.batch.json_lists import top_members
+from groundglow.run.batch.lists import linked_address, wanted_scenes
+from groundglow.run.batch.select import left_out, overlap
+from groundglow.run.config.batch import Select
+from groundglow.run.config.job import Job
 from invented_scene import paint_scene
 from night import layer_digests, paint_night, settle, write_job
 
@@ -201,7 +201,7 @@ class TestLists:
 
 @pytest.mark.parametrize("piece", [1, 7, 1 << 18])
 def test_members_are_those_of_the_whole_document(piece: int, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr("groundglow.run.batch_json._PIECE", piece)
+    monkeypatch.setattr("groundglow.run.batch.json_lists._PIECE", piece)
     document = {
         "a": 123456,
         "features": [1.5e10, {"x": ["]", '"', "é"]}, [], "t"],

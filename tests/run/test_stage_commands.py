@@ -111,7 +111,7 @@ def test_a_stage_that_is_ended_leaves_nothing_behind(tmp_path: Path) -> None:
     # Workflow managers end a job with SIGTERM; here it comes while the output is being built.
     program = (
         "import sys, time; from pathlib import Path; from groundglow.cli import main; "
-        "from groundglow.run import stage_atmosphere as stage; whole = stage.write_whole\n"
+        "from groundglow.run.stage import atmosphere as stage; whole = stage.write_whole\n"
         "def slowly(path, data):\n    whole(path, data); print('half', flush=True); time.sleep(60)\n"
         "stage.write_whole = slowly\nmain()"
     )

@@ -13,7 +13,7 @@ from pathlib import Path
 import pytest
 
 from command_line import groundglow
-from groundglow.run.publish_place import LocalPlace
+from groundglow.run.placing.place import LocalPlace
 from night import layer_digests, leftovers, paint_night, write_job
 
 INTERRUPTED = 130

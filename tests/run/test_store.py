@@ -16,9 +16,9 @@ from typing import Any
 import pytest
 
 from command_line import groundglow
-from groundglow.run import publish_store
-from groundglow.run.publish_store import StorePlace, place_at
-from groundglow.run.store_client import store_client
+from groundglow.run.access.store_client import store_client
+from groundglow.run.placing import store as publish_store
+from groundglow.run.placing.store import StorePlace, place_at
 from invented_scene import scene_text
 from night import NAMES, layer_digests, paint_night, write_job
 

@@ -13,7 +13,7 @@ from rasterio.crs import CRS
 from groundglow import api
 from groundglow.quantities import FLAG, FLAGS, QUANTITIES
 from groundglow.raster.grid import Block
-from groundglow.run.worker import map_coordinates
+from groundglow.run.blocks.worker import map_coordinates
 from groundglow.stages.grid import coordinates, grid_of
 from invented_scene import paint_scene
 from painted_rasters import UTM, grid
