@@ -25,10 +25,11 @@ from groundglow.physics.spectral_response import top_hat
 
 TWO_BANDS = {"10": top_hat(10.60, 11.19), "11": top_hat(11.50, 12.51)}
 SUMMER = model_atmosphere("midlatitude_summer")
-TILE = 512
+# Rows and columns that walk the chain together in a run.
+ROWS, COLUMNS = 64, 512
 
 
-def best(work: Callable[[], object], repeats: int = 15) -> float:
+def best(work: Callable[[], object], repeats: int = 60) -> float:
     """Shortest of several runs. [s]."""
     work()
     found = []
@@ -75,23 +76,23 @@ def scene() -> None:
 
 def pixels() -> None:
     random = np.random.default_rng(1)
-    rough = random.uniform(100.0, 900.0, (TILE, TILE)).astype(np.float32)
-    angle = random.uniform(0.0, 7.5, (TILE, TILE)).astype(np.float32)
+    rough = random.uniform(100.0, 900.0, (ROWS, COLUMNS)).astype(np.float32)
+    angle = random.uniform(0.0, 7.5, (ROWS, COLUMNS)).astype(np.float32)
     view = View((100.0, 900.0), (0.0, 7.5))
     settings = AirSettings(uncertainty=source_uncertainty("analysis"))
     stack = pack(solve_atmosphere([PlacedProfile(SUMMER)], TWO_BANDS, view, settings)["10"])
-    place = np.zeros(TILE)
+    x, y = np.zeros(COLUMNS), np.zeros(ROWS)
     slant = secant(angle)
-    out = interpolate(stack, place, place, rough, slant)
+    out = interpolate(stack, x, y, rough, slant)
     other = out.copy()
-    each = 1e9 / TILE**2
-    report(f"copying {stack.fields} fields of a tile", each * best(lambda: np.copyto(other, out)), "ns/pixel")
+    each = 1e9 / (ROWS * COLUMNS)
+    report(f"copying {stack.fields} fields of a strip", each * best(lambda: np.copyto(other, out)), "ns/pixel")
     report("secants of a raster of angles", each * best(lambda: secant(angle, out=slant)), "ns/pixel")
     for what, height, view_secant in (
         ("interpolating them: rasters of height and angle", rough, slant),
         ("interpolating them: raster of height, one angle", rough, 1.004),
     ):
-        seconds = best(lambda h=height, s=view_secant: interpolate(stack, place, place, h, s, out), 40)
+        seconds = best(lambda h=height, s=view_secant: interpolate(stack, x, y, h, s, out), 40)
         report(what, each * seconds, "ns/pixel", 10.0)
 
 

@@ -37,6 +37,9 @@ from groundglow.scene.quality_read import read_flags
 Pixels = NDArray[np.float32]
 Flags = NDArray[np.uint16]
 
+# Rows that walk the chain together: the air's fields and the maps of a strip stay in the cache.
+_STRIP = 64
+
 _SATURATED = np.uint16(FLAG["saturated"].mask)
 _INTERPOLATED = np.uint16(FLAG["interpolated"].mask)
 _IMPOSSIBLE = np.uint16(FLAG["impossible"].mask)
@@ -169,7 +172,7 @@ def work_block(work: SceneWork, block: Block) -> BlockResult:
     names = [name for name in work.formats if name != "quality"]
     maps = {name: np.empty((block.height, block.width), np.float32) for name in names}
     ground = ground_of(work, block)
-    for rows, columns in tiles(block):
+    for rows, columns in tiles(block, _STRIP):
         tile_radiance = np.ascontiguousarray(radiance[rows, columns])
         tile_flags = np.ascontiguousarray(flags[rows, columns])
         brightness = brightness_temperature(tile_radiance, tile_flags, work.settings)
@@ -305,12 +308,12 @@ def _number_or_pixels(
     return read_block(source, work.grid, block, resampling="continuous").values if needed else 0.0
 
 
-def tiles(block: Block) -> Iterator[tuple[slice, slice]]:
-    """Rows and columns of each tile of a block."""
-    for row in range(0, block.height, TILE):
+def tiles(block: Block, height: int = TILE) -> Iterator[tuple[slice, slice]]:
+    """Rows and columns of each tile of a block, or of strips of a tile's width and another height."""
+    for row in range(0, block.height, height):
         for column in range(0, block.width, TILE):
             yield (
-                slice(row, min(row + TILE, block.height)),
+                slice(row, min(row + height, block.height)),
                 slice(column, min(column + TILE, block.width)),
             )
 
