@@ -9,7 +9,9 @@ says so. ``fastmath`` and ``parallel`` stay off: they would let the machine deci
 from __future__ import annotations
 
 import logging
-from collections.abc import Callable
+import sys
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from functools import cache, partial
 from typing import TypeVar, cast
 
@@ -42,7 +44,8 @@ def kernel(*signatures: str, inline: bool = False) -> Callable[[Function], Funct
         chosen = list(signatures) or None
         compiled = partial(numba.njit, chosen, nogil=True, error_model="numpy", forceinline=inline)
         try:
-            return cast("Function", compiled(cache=True)(function))
+            with _linear_algebra_unseen():
+                return cast("Function", compiled(cache=True)(function))
         except (RuntimeError, OSError) as error:
             if isinstance(error, RuntimeError) and "cannot cache" not in str(error):
                 raise
@@ -60,3 +63,20 @@ def _tell_once(reason: str) -> None:
         "set NUMBA_CACHE_DIR to a writable folder",
         reason,
     )
+
+
+@contextmanager
+def _linear_algebra_unseen() -> Iterator[None]:
+    """Keep Numba's first kernel from loading scipy.linalg, which costs every start a quarter of a second.
+
+    Numba looks for scipy's BLAS when its first kernel is made, and again when a kernel wants linear
+    algebra. Ours never do; a user's own, compiled later, find it as usual.
+    """
+    if "scipy.linalg" in sys.modules:
+        yield
+        return
+    sys.modules["scipy.linalg"] = None  # type: ignore[assignment]  # how Python marks a module that is not there
+    try:
+        yield
+    finally:
+        del sys.modules["scipy.linalg"]

@@ -265,6 +265,7 @@ def test_the_run_loads_nothing_heavy(tmp_path: Path) -> None:
         "pystac",
         "distributed",
         "pandas",
+        "scipy.linalg",
         "pyproj",
     }
     assert not heavy & loaded
