@@ -86,7 +86,9 @@ def pixels() -> None:
     out = interpolate(stack, x, y, rough, slant)
     other = out.copy()
     each = 1e9 / (ROWS * COLUMNS)
-    report(f"copying {stack.fields} fields of a strip", each * best(lambda: np.copyto(other, out)), "ns/pixel")
+    report(
+        f"copying {stack.fields} fields of a strip", each * best(lambda: np.copyto(other, out)), "ns/pixel"
+    )
     report("secants of a raster of angles", each * best(lambda: secant(angle, out=slant)), "ns/pixel")
     for what, height, view_secant in (
         ("interpolating them: rasters of height and angle", rough, slant),
