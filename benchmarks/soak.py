@@ -31,10 +31,10 @@ from rasterio.windows import Window
 ROOT = Path(__file__).parents[1]
 sys.path[:0] = [str(ROOT / "tests"), str(ROOT / "tests" / "run")]
 
-from test_stops import KILLED_AT, every_scene_is_whole  # noqa: E402
+from test_stops import KILLED_AT, every_scene_is_whole  # noqa: E402  (found only after the path is set)
 
 from invented_scene import paint_scene, scene_text  # noqa: E402  (the tests' own scenes)
-from night import layer_digests, leftovers, paint_night, write_job  # noqa: E402
+from night import layer_digests, leftovers, paint_night, write_job  # noqa: E402  (as above)
 
 
 def measured(job: Path, *options: str) -> tuple[float, float]:

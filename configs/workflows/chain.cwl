@@ -3,7 +3,7 @@
 #   cwltool --no-container --cachedir cache --outdir maps configs/workflows/chain.cwl \
 #       --project . --job configs/demo.toml --scene data_demo/scene.toml --name emberholt
 #
-# With --cachedir a chain that failed goes on where it stopped.
+# With --cachedir a chain that failed can go on where it stopped; what cwltool does not recognise it makes again.
 cwlVersion: v1.2
 class: Workflow
 label: Thermal bands to maps of surface temperature and flux
